@@ -67,7 +67,8 @@ def ascending(wavelength_nm: ArrayLike) -> tuple[FloatArray, bool]:
         raise InputError.single(
             "axis-not-nm",
             ".wavelength_nm",
-            f"expected wavelengths in nm between {WAVELENGTH_LIMITS_NM[0]:g} and {WAVELENGTH_LIMITS_NM[1]:g}, found {low:g} to {high:g}",
+            f"expected wavelengths in nm between {WAVELENGTH_LIMITS_NM[0]:g} and {WAVELENGTH_LIMITS_NM[1]:g}, "
+            f"found {low:g} to {high:g}",
             "convert micrometres (x 1000) or wavenumbers (1e7 / cm-1) to nm first",
         )
     return (read_only(axis[::-1]), True) if falling else (axis, False)
@@ -117,11 +118,11 @@ def resample(wavelength_nm: FloatArray, values: FloatArray, onto_nm: FloatArray)
     """
     outside = np.flatnonzero(~covered(onto_nm, wavelength_nm))
     if outside.size:
-        k = int(outside[0])
+        first = int(outside[0])
         raise InputError.single(
             "extrapolation",
-            f".wavelength_nm[{k}]",
-            f"{onto_nm[k]:g} nm lies outside the tabulated range {wavelength_nm[0]:g} to {wavelength_nm[-1]:g} nm",
+            f".wavelength_nm[{first}]",
+            f"{onto_nm[first]:g} nm lies outside the tabulated range {wavelength_nm[0]:g} to {wavelength_nm[-1]:g} nm",
             "narrow the wavelength range: nothing is extrapolated",
         )
     if wavelength_nm.size == 1:

@@ -107,7 +107,7 @@ class Component:
         molar_mass_g_per_mol: float | None = None,
         linear_to: float | None = None,
         analyte: str | None = None,
-        conditions: Conditions = Conditions(),  # noqa: B008  (frozen)
+        conditions: Conditions = Conditions(),
         caution: str = "",
     ) -> None:
         axis, turned = ascending(wavelength_nm)

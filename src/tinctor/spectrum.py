@@ -273,7 +273,7 @@ def _not_absorbance(readings: FloatArray) -> list[Fault]:
         return []
     row, column = (int(k) for k in np.argwhere(np.abs(readings) > ABSORBANCE_LIMIT)[0])
     value = float(readings[row, column])
-    looks = " The values look like per cent transmittance." if 0 <= readings.min() and readings.max() <= 150 else ""
+    looks = " The values look like per cent transmittance." if readings.min() >= 0 and readings.max() <= 150 else ""
     return [
         Fault(
             "not-absorbance",
@@ -297,16 +297,17 @@ def _per_spectrum(value: ArrayLike, name: str, n: int, faults: list[Fault]) -> F
 
 
 def _cell_faults(scalars: dict[str, FloatArray]) -> list[Fault]:
-    limits = (
-        ("path_length_cm", lambda v: v <= 0, "must be above 0 cm", "the distance light travels in the cell, 1 for a 10 mm cell"),
-        ("path_length_u_cm", lambda v: v < 0, "must not be negative", ""),
-        ("dilution_factor", lambda v: v < 1, "must be at least 1", "final volume over taken volume: 50 for 1 mL made up to 50 mL"),
-        ("dilution_factor_u", lambda v: v < 0, "must not be negative", ""),
+    path, dilution = scalars["path_length_cm"], scalars["dilution_factor"]
+    rules = (
+        ("path_length_cm", path <= 0, "must be above 0 cm", "the distance light travels in the cell, 1 for a 10 mm cell"),
+        ("path_length_u_cm", scalars["path_length_u_cm"] < 0, "must not be negative", ""),
+        ("dilution_factor", dilution < 1, "must be at least 1", "final volume over taken volume: 50 for 1 mL made up to 50 mL"),
+        ("dilution_factor_u", scalars["dilution_factor_u"] < 0, "must not be negative", ""),
     )
     return [
         Fault(name.removesuffix("_cm").replace("_", "-"), f".{name}[{k}]", f"{name} {rule}, found {scalars[name][k]:g}", hint)
-        for name, is_wrong, rule, hint in limits
-        for k in np.flatnonzero(is_wrong(scalars[name]))
+        for name, wrong, rule, hint in rules
+        for k in np.flatnonzero(wrong)
     ]
 
 

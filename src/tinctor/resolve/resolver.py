@@ -1,0 +1,259 @@
+"""One design applied to blocks of spectra: fit, uncertainty, interval, judgement."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import fields, replace
+from typing import Final
+
+import numpy as np
+
+from tinctor.arrays import FloatArray
+from tinctor.component import Component
+from tinctor.noise import NoiseModel
+from tinctor.resolve.design import Design
+from tinctor.resolve.fit import FitBlock, FitColumns, fit_columns, fit_rows
+from tinctor.resolve.interferent import Interferent, interferent
+from tinctor.resolve.interval import non_negative_interval
+from tinctor.resolve.judge import Evidence, judge
+from tinctor.resolve.nonnegative import nearest_nonnegative
+from tinctor.resolve.parts import Part, merged_parts, put_rows, reordered
+from tinctor.resolve.residuals import durbin_watson, effective_points, neighbour_correlation, residual_tests
+from tinctor.resolve.resolution import Severity
+from tinctor.resolve.settings import ResolveSettings
+from tinctor.resolve.uncertainty import Cell, Estimates, estimates, limits_of_detection
+
+__all__ = ["Resolver"]
+
+#: Below this pivot the readings that are left do not determine a row's coefficients on the common basis.
+SMALLEST_PIVOT: Final = 1e-7
+#: Where no component has more than this share of its highest absorptivity, the solution should be clear.
+CLEAR_SHARE: Final = 0.01
+
+
+class Resolver:
+    """What every block of a batch shares."""
+
+    def __init__(self, design: Design, components: Sequence[Component], settings: ResolveSettings) -> None:
+        self.design, self.components, self.settings = design, components, settings
+        self.columns: FitColumns = fit_columns(design)
+        self.interferent: Interferent | None = interferent(design) if design.unknowns <= design.wavelength_nm.size else None
+        unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
+        sizes = np.linalg.svd(unit[:, design.independent], compute_uv=False) if design.Q.shape[1] else np.ones(1)
+        self.condition = float(sizes[0] / sizes[-1])
+        self.dependent = _dependent_components(design)
+        E = design.X[:, : design.p]
+        self.clear = (np.abs(E) <= CLEAR_SHARE * E.max(axis=0, initial=0.0)).all(axis=1)
+
+    def block(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell) -> Part:
+        """Resolve the rows of one block."""
+        n, m = A.shape
+        if self.design.unknowns > m:
+            return _undetermined(self, n, float(m))
+        saturated = self.settings.absorbance_limit < A
+        masked = saturated.any(axis=1)
+        if not masked.any():
+            return self._rows(A, reading_u, cell, None)
+        parts = []
+        order = np.concatenate([np.flatnonzero(~masked), np.flatnonzero(masked)])
+        for rows, mask in ((np.flatnonzero(~masked), None), (np.flatnonzero(masked), saturated)):
+            if rows.size:
+                part = self._rows(
+                    A[rows], None if reading_u is None else reading_u[rows], _take(cell, rows), None if mask is None else mask[rows]
+                )
+                parts.append(part)
+        return reordered(merged_parts(parts), np.argsort(order, kind="stable"))
+
+    def _rows(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell, saturated: np.ndarray | None) -> Part:
+        noise = self.settings.noise
+        keep = None if saturated is None else ~saturated
+        fit = fit_rows(self.columns, A, noise, keep, reading_u)
+        poor = (fit.smallest_pivot < SMALLEST_PIVOT) | (fit.points < self.design.unknowns)
+        result = self._judged(A, reading_u, cell, saturated, fit)
+        if poor.any():
+            self._replace_poor(result, np.flatnonzero(poor), A, reading_u, cell, saturated)
+        return result
+
+    def _judged(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell, saturated: np.ndarray | None, fit: FitBlock) -> Part:
+        design, settings = self.design, self.settings
+        degrees = np.maximum(fit.points - design.unknowns, 0.0)
+        effective = self._effective_points(A, reading_u, fit, saturated)
+        reduced = np.divide(fit.chi_square, degrees, out=np.ones_like(degrees), where=degrees > 0)
+        inflation = np.maximum(reduced, 1.0) * np.maximum(fit.points, 1.0) / effective
+        e = estimates(self.columns, fit, self.components, cell, settings.noise, inflation)
+        p = design.p
+        u = np.sqrt(np.maximum(np.einsum("nii->ni", e.covariance), 0.0))
+        decision, detection = limits_of_detection(e.u_at_zero, e.proportional)
+        low, high = non_negative_interval(e.concentration, u, settings.coverage)
+        signed = np.append(design.non_negative, False) if design.shift else design.non_negative
+        constrained = nearest_nonnegative(e.coefficients, e.coefficient_covariance, signed)[:, :p] * cell.factor[:, None]
+        tests = residual_tests(fit, design.unknowns, settings.noise, settings.limits)
+        selectivity = 1.0 / np.sqrt(e.variance_inflation)
+        selectivity[:, self.dependent] = 0.0
+        result: Part = {
+            "unconstrained": e.concentration,
+            "concentration": constrained,
+            "u": u,
+            "low": low,
+            "high": high,
+            "decision_limit": decision,
+            "detection_limit": detection,
+            "budget": e.budget,
+            "covariance": e.covariance,
+            "relative_per_nm": e.relative_per_nm,
+            "fitted_per_cm": e.coefficients[:, :p],
+            "background_value": e.coefficients[:, p:],
+            "background_u": e.background_u,
+            "points": fit.points,
+            "residual_rms": np.sqrt(fit.squares / np.maximum(fit.points, 1.0)),
+            "chi_square": fit.chi_square,
+            "degrees_of_freedom": degrees,
+            "durbin_watson": durbin_watson(fit),
+            "condition_number": np.full(len(A), self.condition),
+            "effective_points": effective,
+            "optimality": fit.optimality,
+            "visible_residual": tests.visible,
+            "excess_residual": tests.excess,
+            "structure": tests.structure,
+            "structure_limit": tests.structure_limit,
+            "chi_square_limit": tests.chi_square_limit,
+            "selectivity": selectivity,
+            "correlation": e.correlation,
+            "saturated": saturated,
+        }
+        clear_window, offset_bias = self._clear_window(A, e, cell)
+        result["severity"] = judge(
+            Evidence(
+                design=design,
+                components=self.components,
+                settings=settings,
+                u_at_zero=e.u_at_zero,
+                factor=cell.factor,
+                tests=tests,
+                interferent=self.interferent,
+                clear_window=clear_window,
+                offset_bias=offset_bias,
+                **{
+                    name: result[name]
+                    for name in (
+                        "unconstrained", "u", "decision_limit", "fitted_per_cm", "background_value", "background_u",
+                        "points", "selectivity", "saturated",
+                    )
+                },
+            )
+        )  # fmt: skip
+        return result
+
+    def _effective_points(
+        self, A: FloatArray, reading_u: FloatArray | None, fit: FitBlock, saturated: np.ndarray | None
+    ) -> FloatArray:
+        """Readings less what correlation between neighbours takes away, looked at only where it is significant."""
+        effective = np.maximum(fit.points, 1.0)
+        significant = neighbour_correlation(fit) * np.sqrt(np.maximum(fit.points, 1.0)) > 2.0
+        rows = np.flatnonzero(significant & (fit.points >= 12) & (fit.points - self.design.unknowns >= 6))
+        if rows.size:
+            used = np.ones((rows.size, A.shape[1]), dtype=bool) if saturated is None else ~saturated[rows]
+            residual = _standardised_residual(
+                self.design, A[rows], fit.coordinates[rows], self.settings.noise, None if reading_u is None else reading_u[rows]
+            )
+            residual[~used] = 0.0
+            effective[rows] = effective_points(residual, used, fit.points[rows])
+        return effective
+
+    def _clear_window(self, A: FloatArray, e: Estimates, cell: Cell) -> tuple[FloatArray, FloatArray]:
+        """Mean residual where nothing absorbs, and the bias of an offset of that size; for designs without a background."""
+        design = self.design
+        if design.terms or design.shift or self.clear.sum() < 3:
+            return np.zeros(0), np.zeros(0)
+        window = A[:, self.clear] - e.coefficients[:, : design.p] @ design.X[self.clear, : design.p].T
+        mean = window.mean(axis=1)
+        response = design.Rinv[: design.p] @ design.Q.sum(axis=0)
+        return mean, mean[:, None] * response * cell.factor[:, None]
+
+    def _replace_poor(
+        self,
+        result: Part,
+        poor: np.ndarray,
+        A: FloatArray,
+        reading_u: FloatArray | None,
+        cell: Cell,
+        saturated: np.ndarray | None,
+    ) -> None:
+        """Resolve rows anew, each group with the same readings left on a design of its own; changes `result` in place."""
+        masks = np.zeros((poor.size, A.shape[1]), dtype=bool) if saturated is None else saturated[poor]
+        distinct, group = np.unique(masks, axis=0, return_inverse=True)
+        for k, mask in enumerate(distinct):
+            rows, keep = poor[group.ravel() == k], ~mask
+            reduced = self.design.on(keep)
+            if reduced.unknowns == self.design.unknowns and reduced.shift:
+                reduced = replace(reduced, shift=False)  # a shift that the spectrum cannot show
+            context = Resolver(reduced, self.components, self.settings)
+            if reduced.unknowns > keep.sum() or (reduced.unknowns == self.design.unknowns and not mask.any()):
+                part = _undetermined(context, rows.size, float(keep.sum()))
+            else:
+                part = context.plain(A[rows][:, keep], None if reading_u is None else reading_u[rows][:, keep], _take(cell, rows))
+            put_rows(result, rows, part)
+
+    def plain(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell) -> Part:
+        return self._judged(A, reading_u, cell, None, fit_rows(self.columns, A, self.settings.noise, None, reading_u))
+
+
+def _undetermined(context: Resolver, n: int, points: float) -> Part:
+    """Rows of zeros, refused for too few readings."""
+    design = context.design
+    p, b = design.p, len(design.terms) + int(design.shift)
+    shapes: dict[str, tuple[int, ...]] = {
+        **dict.fromkeys(
+            ("unconstrained", "concentration", "u", "low", "high", "decision_limit", "detection_limit", "relative_per_nm",
+             "fitted_per_cm", "selectivity"), (n, p),
+        ),
+        **dict.fromkeys(("background_value", "background_u"), (n, b)),
+        **dict.fromkeys(("covariance", "correlation"), (n, p, p)),
+        "budget": (n, p, 6),
+        **dict.fromkeys(
+            ("residual_rms", "chi_square", "degrees_of_freedom", "durbin_watson", "optimality", "visible_residual",
+             "excess_residual", "structure", "structure_limit", "chi_square_limit"), (n,),
+        ),
+    }  # fmt: skip
+    result: Part = {name: np.zeros(shape) for name, shape in shapes.items()}
+    result.update(points=np.full(n, points), condition_number=np.full(n, context.condition), effective_points=np.full(n, points))
+    result["saturated"] = None
+    grade = np.full(n, Severity.REFUSAL, dtype=np.int8)
+    result["severity"] = {"range-not-covered" if points == 0 else "too-few-points": grade}
+    return result
+
+
+def _dependent_components(design: Design) -> np.ndarray:
+    """Component columns in an exact linear dependence: the left-out ones and those they are made of."""
+    p = design.p
+    involved = ~design.independent & design.X.any(axis=0)
+    unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
+    kept = np.flatnonzero(design.independent)
+    for k in np.flatnonzero(involved):
+        weights = np.linalg.lstsq(unit[:, kept], unit[:, k], rcond=None)[0]
+        involved[kept[np.abs(weights) > 1e-6]] = True
+    return np.asarray(involved[:p])
+
+
+def _standardised_residual(
+    design: Design, A: FloatArray, coordinates: FloatArray, noise: NoiseModel, reading_u: FloatArray | None
+) -> FloatArray:
+    """Residuals over their standard deviation, less the part that a shift of the axis explains where one is declared."""
+    y = coordinates[:, : design.Q.shape[1]]
+    s = y @ design.Rinv[: design.p].T
+    fitted, D = y @ design.Q.T, s @ design.slope.T
+    residual = A - fitted
+    if design.shift:
+        residual -= coordinates[:, -1:] * D
+    variance = noise.reading_variance(np.minimum(fitted, 10.0)) if reading_u is None else reading_u**2
+    root = np.sqrt(variance + (s**2) @ design.shape_variance.T)
+    residual /= root
+    if noise.wavelength_nm > 0:
+        D /= root
+        size = np.vecdot(D, D)
+        residual -= (np.vecdot(residual, D) / np.where(size > 0, size, 1.0))[:, None] * D
+    return residual
+
+
+def _take(cell: Cell, rows: np.ndarray) -> Cell:
+    return Cell(*(getattr(cell, f.name)[rows] for f in fields(Cell)))
