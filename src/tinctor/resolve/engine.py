@@ -16,7 +16,7 @@ from tinctor.errors import InputError
 from tinctor.resolve.batch_notes import batch_notes
 from tinctor.resolve.design import build_design, usable_wavelengths
 from tinctor.resolve.judge import status_of
-from tinctor.resolve.parts import Part, merged_parts, strongest
+from tinctor.resolve.parts import Collector, strongest
 from tinctor.resolve.resolution import FlagCode, Resolution
 from tinctor.resolve.resolver import Resolver
 from tinctor.resolve.settings import ResolveSettings
@@ -27,7 +27,7 @@ from tinctor.spectrum import SpectrumBatch
 __all__ = ["resolve"]
 
 #: Spectra per block: what one thread works on at a time.
-BLOCK: Final = 2048
+BLOCK: Final = 4096
 
 
 def resolve(batch: SpectrumBatch, components: Sequence[Component], settings: ResolveSettings | None = None) -> Resolution:
@@ -64,14 +64,16 @@ def resolve(batch: SpectrumBatch, components: Sequence[Component], settings: Res
     columns_used: slice | np.ndarray = _as_slice(inside)
     context = Resolver(design, components, settings)
 
-    def block(rows: slice) -> Part:
+    collector = Collector(len(batch))
+
+    def block(rows: slice) -> None:
         reading_u = None if batch.absorbance_u is None else batch.absorbance_u[rows, columns_used]
-        return context.block(batch.absorbance[rows, columns_used], reading_u, _cell(batch, rows))
+        collector.put(rows, context.block(batch.absorbance[rows, columns_used], reading_u, _cell(batch, rows)))
 
     starts = range(0, len(batch), BLOCK)
     with workers(len(starts)) as run:
-        parts = list(run(block, (slice(start, start + BLOCK) for start in starts)))
-    merged = merged_parts(parts)
+        list(run(block, (slice(start, start + BLOCK) for start in starts)))
+    merged = collector.part
     severity: dict[FlagCode, np.ndarray] = merged.pop("severity")
     for code, grade in common.items():
         severity[code] = strongest(severity.get(code), grade, len(batch))

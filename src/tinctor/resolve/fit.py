@@ -8,6 +8,7 @@ that stay in the processor's cache, and no number of one spectrum depends on ano
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Final
 
@@ -21,7 +22,9 @@ from tinctor.resolve.small import Cholesky, packed_index, packed_pairs
 __all__ = ["FitBlock", "FitColumns", "fit_columns", "fit_rows"]
 
 #: Spectra per chunk: a handful of (CHUNK, 300) work arrays fit the cache.
-CHUNK: Final = 256
+CHUNK: Final = 1024
+
+LOG2_10: Final = math.log2(10.0)
 
 #: A fitted shift changes the column it is fitted with; the weights settle in as many rounds.
 SHIFT_ROUNDS: Final = 4
@@ -155,11 +158,11 @@ class _Work:
     """Arrays (rows, m) that every chunk writes anew: fresh ones would cost more than the arithmetic done in them."""
 
     def __init__(self, rows: int, m: int) -> None:
-        self.residual, self.variance, self.weight, self.slope, self.product = np.empty((5, rows, m))
+        self.arrays = np.empty((6, rows, m))
 
-    def of(self, n: int) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, FloatArray]:
-        """Return (residual, variance, weight, slope, product) for n rows."""
-        return self.residual[:n], self.variance[:n], self.weight[:n], self.slope[:n], self.product[:n]
+    def of(self, n: int) -> FloatArray:
+        """Return six arrays for n rows, (6, n, m)."""
+        return self.arrays[:, :n]
 
 
 def _fit_chunk(
@@ -172,7 +175,7 @@ def _fit_chunk(
 ) -> FitBlock:
     design = columns.design
     r, k = columns.r, columns.k
-    residual, variance, weight, D, product = work.of(len(A))
+    residual, variance, shape_variance, weight, D, product = work.of(len(A))
     y, smallest_pivot = _first_estimate(columns, A, keep)
     shift = np.zeros(len(A))
     for _ in range(SHIFT_ROUNDS if design.shift else 1):
@@ -181,7 +184,9 @@ def _fit_chunk(
         _reading_variance(fitted, noise, reading_u, variance)
         np.subtract(A, fitted, out=residual)
         np.matmul(s, design.slope.T, out=D)
-        _weights(columns, variance, s, D, noise, product, weight)
+        if columns.has_shape_u:
+            np.matmul(s**2, design.shape_variance.T, out=shape_variance)
+        _weights(columns, variance, shape_variance, D, noise.wavelength_nm, product, weight)
         if keep is not None:
             weight *= keep
         sums = weight @ columns.weighted
@@ -206,7 +211,7 @@ def _fit_chunk(
     np.multiply(weight, residual, out=product)
     chi_square = np.vecdot(product, residual)
     optimality = _optimality(columns, product, D, gram, chi_square)
-    noise_gram, shape_gram = _spread_grams(columns, s, weight, variance, product)
+    noise_gram, shape_gram = _spread_grams(columns, s, weight, variance, shape_variance)
     return FitBlock(
         coordinates=coordinates,
         gram=gram,
@@ -228,20 +233,18 @@ def _fit_chunk(
 def _weights(
     columns: FitColumns,
     variance: FloatArray,
-    s: FloatArray,
+    shape_variance: FloatArray,
     D: FloatArray,
-    noise: NoiseModel,
+    wavelength_u_nm: float,
     product: FloatArray,
     weight: FloatArray,
 ) -> None:
-    """Write 1 / (variance of the reading + of the library's shape + (wavelength_nm dA/dw)^2) into `weight`."""
-    np.copyto(weight, variance)
+    """Write 1 / (variance of the reading + of the library's shape + (wavelength_u_nm dA/dw)^2) into `weight`."""
+    np.multiply(D, wavelength_u_nm, out=product)
+    np.multiply(product, product, out=weight)
+    weight += variance
     if columns.has_shape_u:
-        weight += np.matmul(s**2, columns.design.shape_variance.T, out=product)
-    if noise.wavelength_nm > 0:
-        np.multiply(D, noise.wavelength_nm, out=product)
-        product *= product
-        weight += product
+        weight += shape_variance
     np.divide(1.0, weight, out=weight)
 
 
@@ -258,17 +261,16 @@ def _optimality(
 
 
 def _spread_grams(
-    columns: FitColumns, s: FloatArray, weight: FloatArray, variance: FloatArray, product: FloatArray
+    columns: FitColumns, s: FloatArray, weight: FloatArray, variance: FloatArray, shape_variance: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    """Q' W V W Q for the variance of the readings and of the library's shape; overwrites `weight` and `variance`."""
+    """Q' W V W Q for the variance of the readings and of the library's shape; overwrites all three arrays."""
     np.multiply(weight, weight, out=weight)
     variance *= weight
     noise_gram = _effective(columns, variance @ columns.spread, s)
     if not columns.has_shape_u:
         return noise_gram, np.zeros_like(noise_gram)
-    np.matmul(s**2, columns.design.shape_variance.T, out=product)
-    product *= weight
-    return noise_gram, _effective(columns, product @ columns.spread, s)
+    shape_variance *= weight
+    return noise_gram, _effective(columns, shape_variance @ columns.spread, s)
 
 
 def _first_estimate(columns: FitColumns, A: FloatArray, keep: FloatArray | None) -> tuple[FloatArray, FloatArray]:
@@ -288,8 +290,8 @@ def _reading_variance(fitted: FloatArray, noise: NoiseModel, reading_u: FloatArr
         return
     # floor^2 + (transmittance 10^A / ln 10)^2; the fit may run high where readings are masked
     np.minimum(fitted, 10.0, out=out)
-    out *= 2 * LN10
-    np.exp(out, out=out)
+    out *= 2 * LOG2_10
+    np.exp2(out, out=out)  # half the time of exp on the same processors
     out *= (noise.transmittance / LN10) ** 2
     out += noise.floor**2
 

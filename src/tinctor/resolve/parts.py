@@ -3,16 +3,52 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
+from threading import Lock
 from typing import Any
 
 import numpy as np
 
 from tinctor.resolve.resolution import FlagCode
 
-__all__ = ["Part", "merged_parts", "put_rows", "reordered", "strongest"]
+__all__ = ["Collector", "Part", "merged_parts", "put_rows", "reordered", "strongest"]
 
 #: Arrays by the name of the `Resolution` field; "severity" is a dict of grades by flag code, "saturated" may be None.
 Part = dict[str, Any]
+
+
+class Collector:
+    """A whole batch's arrays, filled block by block from several threads; each writes rows of its own."""
+
+    def __init__(self, n: int) -> None:
+        self.n = n
+        self.part: Part = {"severity": {}, "saturated": None}
+        self._lock = Lock()
+
+    def put(self, rows: slice, part: Part) -> None:
+        """Write one block's rows."""
+        with self._lock:
+            self._make_room(part)
+            for code, grades in part["severity"].items():
+                self._put_severity(rows, code, grades)
+        for name, value in part.items():
+            if name != "severity" and value is not None:
+                self.part[name][rows] = value
+
+    def _make_room(self, part: Part) -> None:
+        for name, value in part.items():
+            if name != "severity" and value is not None and self.part.get(name) is None:
+                make = np.zeros if name == "saturated" else np.empty
+                self.part[name] = make((self.n, *value.shape[1:]), dtype=value.dtype)
+
+    def _put_severity(self, rows: slice, code: FlagCode, grades: np.ndarray) -> None:
+        """Write a flag's grades; one that some block raises per component is kept per component for all."""
+        severity = self.part["severity"]
+        width = grades.shape[1] if grades.ndim == 2 else 0
+        present = severity.get(code)
+        if present is None or (width and present.ndim == 1):
+            severity[code] = _widened(present, self.n, width).copy()
+        whole = severity[code]
+        whole[rows] = grades[:, None] if whole.ndim > grades.ndim else grades
 
 
 def merged_parts(parts: Iterable[Part]) -> Part:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 from enum import IntEnum
 from typing import Literal
@@ -152,6 +151,12 @@ class Resolution:
         """Component names in column order."""
         return tuple(component.name for component in self.components)
 
+    def raise_for_all(self, code: FlagCode, words: str) -> None:
+        """Add a warning that holds for every spectrum of the batch."""
+        grades = self.severity.get(code, np.zeros(len(self), dtype=np.int8))
+        self.severity[code] = np.maximum(grades, np.int8(Severity.WARNING))
+        self.notes[code] = "; ".join(filter(None, [self.notes.get(code, ""), words]))
+
     def spectrum_status(self) -> np.ndarray:
         """Return the status of each spectrum, (n,): refused when every component is, flagged when anything needs a look."""
         refused = (self.status == Status.REFUSED).all(axis=1)
@@ -160,8 +165,3 @@ class Resolution:
             look |= (severity if severity.ndim == 1 else severity.max(axis=1, initial=0)) >= Severity.WARNING
         result: np.ndarray = np.where(refused, Status.REFUSED, np.where(look, Status.FLAGGED, Status.ACCEPTED)).astype(np.int8)
         return result
-
-
-def joined(parts: Sequence[FloatArray]) -> FloatArray:
-    """Return parts of a batch in one array; the part itself when it is the only one."""
-    return parts[0] if len(parts) == 1 else np.concatenate(parts)

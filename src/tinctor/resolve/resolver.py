@@ -149,7 +149,7 @@ class Resolver:
     ) -> FloatArray:
         """Readings less what correlation between neighbours takes away, looked at only where it is significant."""
         effective = np.maximum(fit.points, 1.0)
-        significant = neighbour_correlation(fit) * np.sqrt(np.maximum(fit.points, 1.0)) > 2.0
+        significant = neighbour_correlation(fit) * np.sqrt(np.maximum(fit.points, 1.0)) > 2.5
         rows = np.flatnonzero(significant & (fit.points >= 12) & (fit.points - self.design.unknowns >= 6))
         if rows.size:
             used = np.ones((rows.size, A.shape[1]), dtype=bool) if saturated is None else ~saturated[rows]

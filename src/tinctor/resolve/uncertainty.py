@@ -25,7 +25,7 @@ from tinctor.component import Component
 from tinctor.noise import NoiseModel
 from tinctor.resolve.fit import FitBlock, FitColumns
 from tinctor.resolve.quantiles import normal_quantile
-from tinctor.resolve.small import Cholesky, unpacked
+from tinctor.resolve.small import Cholesky, packed_index, packed_pairs, unpacked
 
 __all__ = ["SOURCES", "Cell", "Estimates", "estimates", "limits_of_detection"]
 
@@ -213,7 +213,8 @@ def _coordinates_to_coefficients(columns: FitColumns) -> FloatArray:
 def _variance_inflation(columns: FitColumns, block: FitBlock, metric: FloatArray, p: int) -> FloatArray:
     """(X' W X)_jj ((X' W X)^-1)_jj, with the first factor from X = Q R of the design."""
     R = columns.design.Q.T @ columns.design.X[:, :p]
-    gram = unpacked(block.gram, columns.k)[:, : columns.r, : columns.r]
-    size = np.einsum("rp,nrs,sp->np", R, gram, R, optimize=True)
+    rows, cols = packed_pairs(columns.r)
+    products = R[rows] * R[cols] * np.where(rows == cols, 1.0, 2.0)[:, None]
+    size = block.gram[:, packed_index(columns.k)[rows, cols]] @ products
     inflation: FloatArray = np.maximum(size * np.einsum("nii->ni", metric)[:, :p], 1.0)
     return inflation

@@ -1,0 +1,56 @@
+"""What a result rests on: versions, digests, and every setting after defaults were filled in."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import platform
+from typing import Any
+
+import numpy as np
+from pydantic import Field
+
+from tinctor.operations.shared import RecordUsed, RequestModel, ResponseModel
+from tinctor.version import __version__
+
+__all__ = ["Provenance", "canonical_json", "provenance", "request_sha256"]
+
+
+class Provenance(ResponseModel):
+    """Enough to compute a result again from the record alone, together with the request."""
+
+    software: str = "tinctor"
+    version: str
+    python: str
+    numpy: str
+    request_sha256: str = Field(description="of the request in canonical form: keys sorted, no blanks, defaults filled in")
+    records: list[RecordUsed] = Field(default_factory=list)
+    settings: dict[str, Any] = Field(default_factory=dict)
+
+
+def canonical_json(document: Any) -> str:
+    """Return a document with sorted keys and no blanks; numbers as the shortest text that reads back the same.
+
+    Examples
+    --------
+    >>> canonical_json({"b": 1.0, "a": [True, None]})
+    '{"a":[true,null],"b":1.0}'
+    """
+    return json.dumps(document, sort_keys=True, separators=(",", ":"), allow_nan=False, ensure_ascii=False)
+
+
+def request_sha256(request: RequestModel) -> str:
+    """Return the SHA-256 of a request in canonical form."""
+    return hashlib.sha256(canonical_json(request.model_dump(by_alias=True)).encode()).hexdigest()
+
+
+def provenance(request: RequestModel, records: list[RecordUsed], settings: dict[str, Any]) -> Provenance:
+    """Return the provenance of a response."""
+    return Provenance(
+        version=__version__,
+        python=platform.python_version(),
+        numpy=np.__version__,
+        request_sha256=request_sha256(request),
+        records=records,
+        settings=settings,
+    )

@@ -1,0 +1,105 @@
+"""The import rule: imports go down only, and heavy third-party packages have one home each."""
+
+from __future__ import annotations
+
+import ast
+import sys
+from pathlib import Path
+
+import pytest
+
+SRC = Path(__file__).resolve().parents[2] / "src" / "tinctor"
+
+#: Level of each package; a module may import from lower levels, from its own package, and from no sibling of its level.
+LEVELS = {
+    "version": 0, "errors": 0, "units": 1, "arrays": 1, "axis": 2, "noise": 3, "spectrum": 3, "component": 3,
+    "files": 4, "library": 5, "resolve": 4, "pls": 4, "plan": 6, "operations": 7, "report": 8, "service": 9, "cli": 10, "__main__": 11,
+}  # fmt: skip
+
+#: Pairs that share a level or lie below one another by number, and still must not meet.
+FORBIDDEN = {("library", "resolve"), ("resolve", "files"), ("resolve", "library"), ("plan", "library"), ("plan", "files")}
+DOMAIN = {"spectrum", "component", "noise", "arrays", "axis", "errors", "units", "version"}
+
+#: Third-party packages each package may import.
+THIRD_PARTY = {
+    "version": set(), "errors": set(), "units": set(), "arrays": {"numpy"}, "axis": {"numpy"}, "noise": {"numpy"},
+    "spectrum": {"numpy"}, "component": {"numpy"}, "files": {"numpy"}, "library": {"numpy", "pydantic"},
+    "resolve": {"numpy", "threadpoolctl"}, "operations": {"numpy", "pydantic"}, "report": {"rich", "numpy"},
+    "cli": {"typer", "click"}, "__main__": set(), "__init__": set(),
+}  # fmt: skip
+
+#: Modules that alone may import a package.
+ONE_HOME = {"threadpoolctl": {"resolve/threads.py"}}
+
+
+def modules() -> list[Path]:
+    return sorted(SRC.rglob("*.py"))
+
+
+def package_of(path: Path) -> str:
+    parts = path.relative_to(SRC).parts
+    return parts[0].removesuffix(".py")
+
+
+def imported(path: Path) -> list[str]:
+    """Return absolute names imported anywhere in a file, function bodies included."""
+    names = []
+    for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+        if isinstance(node, ast.Import):
+            names += [alias.name for alias in node.names]
+        elif isinstance(node, ast.ImportFrom):
+            assert node.level == 0, f"{path}: relative import"
+            names += [f"{node.module}.{alias.name}" for alias in node.names]
+    return names
+
+
+def edge_fault(package: str, target: str) -> str | None:
+    if package in ("__init__", target):
+        return None
+    if (package, target) in FORBIDDEN:
+        return f"{package} must not import {target}"
+    if LEVELS[target] < LEVELS[package] or (LEVELS[target] == LEVELS[package] and package in DOMAIN):
+        return None
+    return f"{package} (level {LEVELS[package]}) imports {target} (level {LEVELS[target]}): imports go down only"
+
+
+@pytest.mark.parametrize("path", modules(), ids=lambda p: str(p.relative_to(SRC)))
+def test_imports_go_down_only_and_third_party_packages_have_their_homes(path: Path) -> None:
+    package = package_of(path)
+    faults = []
+    for name in imported(path):
+        top, *rest = name.split(".")
+        if top == "tinctor":
+            if rest and rest[0] not in ("__version__",):
+                faults.append(edge_fault(package, rest[0]))
+        elif top not in sys.stdlib_module_names:
+            if top not in THIRD_PARTY[package]:
+                faults.append(f"{package} must not import {top}")
+            home = ONE_HOME.get(top)
+            if home and str(path.relative_to(SRC)) not in home:
+                faults.append(f"{top} may be imported in {sorted(home)} only")
+    assert not [fault for fault in faults if fault]
+
+
+def test_the_rule_can_fail() -> None:
+    assert edge_fault("resolve", "files") is not None
+    assert edge_fault("errors", "operations") is not None
+    assert edge_fault("cli", "operations") is None
+
+
+def test_no_file_is_longer_than_400_lines() -> None:
+    long = {str(p.relative_to(SRC)): n for p in modules() if (n := len(p.read_text(encoding="utf-8").splitlines())) > 400}
+    assert not long
+
+
+def test_no_function_is_longer_than_60_lines() -> None:
+    long = []
+    for path in modules():
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.FunctionDef | ast.AsyncFunctionDef):
+                body = node.body[1:] if ast.get_docstring(node) and len(node.body) > 1 else node.body
+                assert node.end_lineno is not None
+                length = node.end_lineno - body[0].lineno + 1
+                if length > 60:
+                    long.append(f"{path.relative_to(SRC)}:{node.lineno} {node.name} {length} lines")
+    assert not long
