@@ -29,7 +29,7 @@ def python_with_tinctor(extra: str = "") -> Path:
     extra
         Optional dependencies to install too, "dev" or none.
     """
-    if sys.version_info < (3, 11):
+    if sys.version_info < (3, 11):  # noqa: UP036  (older Pythons must be told, not fail on syntax later)
         raise SystemExit(f"tinctor needs Python 3.11 or later, found {sys.version.split()[0]}")
     python = ENVIRONMENT / ("Scripts/python.exe" if os.name == "nt" else "bin/python")
     stamp = ENVIRONMENT / f"installed-{extra or 'plain'}"

@@ -19,6 +19,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from typing import Self
 
 __all__ = ["FAULTS_SHOWN", "Fault", "InputError", "TinctorError", "UndeterminedError", "UnreadableFileError"]
 
@@ -61,11 +62,11 @@ class InputError(TinctorError, ValueError):
         super().__init__(self.faults)
 
     @classmethod
-    def single(cls, code: str, path: str, message: str, hint: str = "") -> InputError:
+    def single(cls, code: str, path: str, message: str, hint: str = "") -> Self:
         """Return the error for one fault."""
         return cls([Fault(code, path, message, hint)])
 
-    def at(self, prefix: str) -> InputError:
+    def at(self, prefix: str) -> Self:
         """Return the same error with `prefix` put before each fault's path (for example `$.spectra[3]`)."""
         moved = [Fault(f.code, _join(prefix, f.path), f.message, f.hint) for f in self.faults]
         return type(self)(moved)

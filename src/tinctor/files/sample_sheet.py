@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 from tinctor.arrays import quoted
 from tinctor.errors import Fault, InputError, UnreadableFileError
@@ -71,7 +72,8 @@ def apply_sample_sheet(spectra: Sequence[Spectrum], sheet: SampleSheet) -> list[
     changed = []
     for spectrum in spectra:
         try:
-            changed.append(replace(spectrum, **sheet[spectrum.id]))
+            values: dict[str, Any] = dict(sheet[spectrum.id])
+            changed.append(replace(spectrum, **values))
         except InputError as error:
             raise InputError([Fault(f.code, f"sample sheet, {spectrum.id!r}", f.message, f.hint) for f in error.faults]) from error
     return changed

@@ -54,7 +54,7 @@ class ResolveRequest(RequestModel):
     concentration_unit: str | None = Field(
         None, description="mol/L mmol/L umol/L g/L mg/L ug/L; when left out, mol/L for molar components and g/L for those by mass"
     )
-    background: list[Literal["offset", "slope", "scatter", "shift"]] = Field(default_factory=lambda: ["offset"])
+    background: list[Literal["offset", "slope", "scatter", "shift"]] = Field(default=["offset"])
     wavelength_range_nm: Annotated[list[Number], Field(min_length=2, max_length=2)] | None = None
     wavelengths_nm: Numbers | None = None
     absorbance_limit: Number = 2.0

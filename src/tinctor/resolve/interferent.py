@@ -21,6 +21,9 @@ __all__ = ["BAND_WIDTH_NM", "Interferent", "interferent"]
 BAND_WIDTH_NM: Final = 60.0
 #: How many bands, with centres spread evenly over the wavelengths used.
 BANDS: Final = 41
+#: A band that leaves less than this share of itself in the residual looks like a component and is counted as that component:
+#: no residual can tell, whatever its size. Such bands are not in the family.
+SEEN_SHARE: Final = 0.1
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -66,7 +69,9 @@ def interferent(design: Design) -> Interferent | None:
     along = bands @ Q
     left = bands - along @ Q.T
     residual = np.sqrt(np.einsum("ij,ij->i", left, left) / w.size)
-    seen = np.maximum(residual, 1e-12)
-    bias = np.abs(along @ design.Rinv[: design.p].T) / seen[:, None]
-    least = int(np.argmin(residual))
-    return Interferent(float(centres[least]), width, float(1.0 / seen[least]), bias.max(axis=0))
+    share = residual / np.sqrt(np.einsum("ij,ij->i", bands, bands) / w.size)
+    family = np.flatnonzero(share >= min(SEEN_SHARE, share.max()))
+    seen = np.maximum(residual[family], 1e-12)
+    bias = np.abs(along[family] @ design.Rinv[: design.p].T) / seen[:, None]
+    least = int(np.argmin(seen))
+    return Interferent(float(centres[family[least]]), width, float(1.0 / seen[least]), bias.max(axis=0))
