@@ -1,1 +1,80 @@
+"""How much of each known absorber is in a mixed solution, from its UV-visible absorbance spectrum.
 
+    >>> import tinctor
+    >>> collection = tinctor.load_collection("palewater-dyehouse")
+    >>> dyes = [collection.component(name) for name in ("hollin-yellow", "bramble-red", "tarn-blue")]
+    >>> spectra = tinctor.read_spectra("scripts/demo_data/vat-run.csv").spectra
+    >>> result = tinctor.resolve_batch(tinctor.SpectrumBatch.of(spectra), dyes)
+    >>> result.concentration.shape, result.names
+    ((20, 3), ('hollin-yellow', 'bramble-red', 'tarn-blue'))
+
+`tinctor.resolve` is the subpackage with the numerics; the function is exported as `resolve_batch`. Names are loaded when
+they are first used, so that `import tinctor` costs nothing.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+from tinctor.version import __version__
+
+if TYPE_CHECKING:
+    from tinctor.component import Component, Conditions
+    from tinctor.errors import InputError, TinctorError, UndeterminedError
+    from tinctor.files import read_spectra
+    from tinctor.library import Collection, load_collection
+    from tinctor.noise import NoiseModel
+    from tinctor.operations.registry import run_document
+    from tinctor.resolve.engine import resolve as resolve_batch
+    from tinctor.resolve.resolution import Resolution
+    from tinctor.resolve.settings import ResolveSettings
+    from tinctor.spectrum import Spectrum, SpectrumBatch
+
+__all__ = [
+    "Collection",
+    "Component",
+    "Conditions",
+    "InputError",
+    "NoiseModel",
+    "Resolution",
+    "ResolveSettings",
+    "Spectrum",
+    "SpectrumBatch",
+    "TinctorError",
+    "UndeterminedError",
+    "__version__",
+    "load_collection",
+    "read_spectra",
+    "resolve_batch",
+    "run_document",
+]
+
+_HOMES = {
+    "Collection": "tinctor.library",
+    "Component": "tinctor.component",
+    "Conditions": "tinctor.component",
+    "InputError": "tinctor.errors",
+    "NoiseModel": "tinctor.noise",
+    "Resolution": "tinctor.resolve.resolution",
+    "ResolveSettings": "tinctor.resolve.settings",
+    "Spectrum": "tinctor.spectrum",
+    "SpectrumBatch": "tinctor.spectrum",
+    "TinctorError": "tinctor.errors",
+    "UndeterminedError": "tinctor.errors",
+    "load_collection": "tinctor.library",
+    "read_spectra": "tinctor.files",
+    "resolve_batch": "tinctor.resolve.engine:resolve",
+    "run_document": "tinctor.operations.registry",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'tinctor' has no attribute {name!r}")
+    module, _, attribute = _HOMES[name].partition(":")
+    return getattr(import_module(module), attribute or name)
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

@@ -1,1 +1,1 @@
-
+"""The terminal. Commands compute nothing: they build a request, run an operation and print its response."""

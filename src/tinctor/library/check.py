@@ -108,7 +108,10 @@ def _source(record: Record) -> Iterator[tuple[str, str]]:
         if not getattr(source, key).strip():
             yield "source", f"source.{key} is empty"
     if not re.match(r"https?://|doi:|scripts/|not known: ", source.link):
-        yield "link", f"expected a web address, a DOI (doi:...) a script of this project, or 'not known: ...', found {source.link!r}"
+        yield (
+            "link",
+            f"expected a web address, a DOI (doi:...) a script of this project, or 'not known: ...', found {source.link!r}",
+        )
 
 
 def _check_points(record: Record) -> Iterator[tuple[str, str]]:

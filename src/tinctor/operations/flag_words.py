@@ -64,7 +64,7 @@ def _wavelengths(code: FlagCode, resolution: Resolution, row: int) -> tuple[floa
 def _saturated(seen: _Seen, severity: Severity) -> str:
     r = seen.resolution
     wavelengths = _wavelengths("saturated", r, seen.row)
-    where = f"{wavelengths[0]:g} to {wavelengths[-1]:g} nm" if wavelengths else "?"
+    where = f"{wavelengths[0]:g} and {wavelengths[-1]:g} nm" if wavelengths else "?"
     what = f"{len(wavelengths)} readings between {where} are above absorbance {r.settings.absorbance_limit:g} and were not used"
     if severity is Severity.INFO:
         return f"{what}; little of the signal of {', '.join(seen.names())} is lost"

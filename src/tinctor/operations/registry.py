@@ -14,7 +14,7 @@ from tinctor.files.strict_json import parse
 from tinctor.operations.faults import faults_of
 from tinctor.operations.shared import RequestModel, ResponseModel
 
-__all__ = ["OPERATIONS", "Operation", "operation", "run_document"]
+__all__ = ["OPERATIONS", "Operation", "dumped", "operation", "run_checked", "run_document"]
 
 #: Operations by name, with the module that holds each: loaded when it is used.
 OPERATIONS: Final[dict[str, str]] = {"resolve": "tinctor.operations.resolve"}
@@ -69,8 +69,18 @@ def run_document(name: str, request: str | bytes | dict[str, Any]) -> dict[str, 
     tinctor.errors.InputError: this key is required and is not there [at $.components]
     this key is required and is not there [at $.spectra]
     """
+    return dumped(run_checked(name, parse(request) if isinstance(request, str | bytes) else request))
+
+
+def run_checked(name: str, document: Any) -> ResponseModel:
+    """Check a request document, run the operation and return the response model.
+
+    Raises
+    ------
+    InputError
+        Listing every fault with its JSON path.
+    """
     op = operation(name)
-    document = parse(request) if isinstance(request, str | bytes) else request
     if not isinstance(document, dict):
         raise InputError.single("not-an-object", "$", f"expected a JSON object, found {type(document).__name__}")
     if "schema" not in document:
@@ -79,7 +89,7 @@ def run_document(name: str, request: str | bytes | dict[str, Any]) -> dict[str, 
         checked = op.request.model_validate(document)
     except ValidationError as error:
         raise faults_of(error) from error
-    return dumped(op.run(checked))
+    return op.run(checked)
 
 
 def dumped(response: BaseModel) -> dict[str, Any]:

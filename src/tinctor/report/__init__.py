@@ -1,1 +1,1 @@
-
+"""Renders responses and records for people; computes nothing."""

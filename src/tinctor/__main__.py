@@ -1,0 +1,5 @@
+"""`python -m tinctor`."""
+
+from tinctor.cli.main import main
+
+main()

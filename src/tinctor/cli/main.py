@@ -1,0 +1,46 @@
+"""The command `tinctor`. Nothing heavy is imported until a command's body runs."""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+import typer
+
+from tinctor.cli import documents, library
+from tinctor.cli.resolve import EPILOG, resolve
+from tinctor.version import __version__
+
+__all__ = ["app", "main"]
+
+app = typer.Typer(
+    name="tinctor",
+    help="How much of each known absorber is in a mixed solution, from its UV-visible absorbance spectrum, "
+    "and how far to trust the answer.",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+)
+app.command("resolve", epilog=EPILOG)(resolve)
+app.command("json")(documents.run_json)
+app.command("schema")(documents.show_schema)
+app.add_typer(library.app, name="library")
+
+
+def _version(asked: bool) -> None:
+    if asked:
+        typer.echo(f"tinctor {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _options(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version and stop.")
+    ] = False,
+) -> None:
+    """Options before any command."""
+
+
+def main() -> None:
+    """Run the command line."""
+    app()
