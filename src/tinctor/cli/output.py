@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import os
 import sys
-import tempfile
 from enum import StrEnum
 from pathlib import Path
 
@@ -25,6 +24,8 @@ def put(text: str, output: Path | None) -> None:
         sys.stdout.write(text)
         sys.stdout.flush()
         return
+    import tempfile  # loaded when a file is asked for
+
     try:
         handle, name = tempfile.mkstemp(dir=output.parent, prefix=f".{output.name}.")
     except OSError as error:

@@ -232,10 +232,6 @@ def _given(**values: Any) -> dict[str, Any]:
 
 def _say_cautions(response: ResolveResponse) -> None:
     """What a record warns of, once, where the result is read."""
-    from tinctor.library import load_collection
-
     for record in response.provenance.records:
-        library = str(response.provenance.settings["library"])
-        caution = load_collection(library).records[record.name].file.caution
-        if caution:
-            typer.echo(f"caution, {record.name}: {caution}", err=True)
+        if record.caution:
+            typer.echo(f"caution, {record.name}: {record.caution}", err=True)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import difflib
 import os
 import tomllib
 from collections.abc import Iterator, Mapping
@@ -77,6 +76,8 @@ class Collection:
             When there is none of that name, with names that are close.
         """
         if name not in self.records:
+            import difflib  # loaded to word an error
+
             close = difflib.get_close_matches(name.lower(), list(self.records), n=3, cutoff=0.5)
             did_you_mean = f"did you mean {quoted(close)}?" if close else f"`tinctor library list {self.name}` lists what there is"
             raise InputError.single("unknown-component", "", f"collection {self.name!r} has no component {name!r}", did_you_mean)

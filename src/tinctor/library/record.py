@@ -24,7 +24,9 @@ NAME = r"^[a-z0-9]+(-[a-z0-9]+)*$"
 
 
 class _Part(BaseModel):
-    model_config = ConfigDict(strict=True, extra="forbid", allow_inf_nan=False, frozen=True, populate_by_name=True)
+    model_config = ConfigDict(
+        strict=True, extra="forbid", allow_inf_nan=False, frozen=True, populate_by_name=True, defer_build=True
+    )
 
 
 class ConditionsPart(_Part):

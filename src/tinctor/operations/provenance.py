@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-import platform
+import sys
 from typing import Any
 
 import numpy as np
@@ -24,8 +24,8 @@ class Provenance(ResponseModel):
     python: str
     numpy: str
     request_sha256: str = Field(description="of the request in canonical form: keys sorted, no blanks, defaults filled in")
-    records: list[RecordUsed] = Field(default_factory=list)
-    settings: dict[str, Any] = Field(default_factory=dict)
+    records: list[RecordUsed] = Field(default=[])
+    settings: dict[str, Any] = Field(default={})
 
 
 def canonical_json(document: Any) -> str:
@@ -48,7 +48,7 @@ def provenance(request: RequestModel, records: list[RecordUsed], settings: dict[
     """Return the provenance of a response."""
     return Provenance(
         version=__version__,
-        python=platform.python_version(),
+        python=sys.version.split()[0],
         numpy=np.__version__,
         request_sha256=request_sha256(request),
         records=records,

@@ -159,7 +159,7 @@ def _components(request: ResolveRequest) -> tuple[list[Component], list[RecordUs
         assert collection is not None
         component = collection.component(choice)
         record = collection.records[choice]
-        records.append(RecordUsed(name=choice, record=record.reference, sha256=record.sha256))
+        records.append(RecordUsed(name=choice, record=record.reference, sha256=record.sha256, caution=record.file.caution))
         return component
 
     parts = [(f".components[{k}]", lambda choice=choice: make(choice)) for k, choice in enumerate(request.components)]

@@ -36,13 +36,15 @@ Numbers = Annotated[list[Number], Field(min_length=1, max_length=LONGEST)]
 class RequestModel(BaseModel):
     """Base of what comes in: strict types, finite numbers, no unknown keys."""
 
-    model_config = ConfigDict(strict=True, extra="forbid", allow_inf_nan=False, frozen=True, populate_by_name=True)
+    model_config = ConfigDict(
+        strict=True, extra="forbid", allow_inf_nan=False, frozen=True, populate_by_name=True, defer_build=True
+    )
 
 
 class ResponseModel(BaseModel):
     """Base of what goes out. Every number is finite; what cannot be stood behind is null."""
 
-    model_config = ConfigDict(allow_inf_nan=False, frozen=True, populate_by_name=True)
+    model_config = ConfigDict(allow_inf_nan=False, frozen=True, populate_by_name=True, defer_build=True)
 
 
 class SpectrumIn(RequestModel):
@@ -187,6 +189,7 @@ class RecordUsed(ResponseModel):
     name: str
     record: str
     sha256: str
+    caution: str = Field("", description="what the record warns of")
 
 
 def gather(parts: list[tuple[str, Any]]) -> list[Any]:

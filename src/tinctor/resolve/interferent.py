@@ -13,7 +13,7 @@ from typing import Final
 import numpy as np
 
 from tinctor.arrays import FloatArray
-from tinctor.resolve.design import Design
+from tinctor.resolve.design import Design, median_step
 
 __all__ = ["BAND_WIDTH_NM", "Interferent", "interferent"]
 
@@ -63,7 +63,7 @@ def interferent(design: Design) -> Interferent | None:
     w, Q = design.wavelength_nm, design.Q
     if w.size < Q.shape[1] + 4:
         return None
-    width = max(BAND_WIDTH_NM, 4.0 * float(np.median(np.diff(w))))
+    width = max(BAND_WIDTH_NM, 4.0 * median_step(w))
     centres = np.linspace(w[0], w[-1], BANDS)
     bands = np.exp(-4.0 * np.log(2.0) * ((w[None, :] - centres[:, None]) / width) ** 2)
     along = bands @ Q

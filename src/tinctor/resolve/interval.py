@@ -58,22 +58,16 @@ def _lower_limits(coverage: float) -> tuple[FloatArray, FloatArray]:
     """
     z = normal_quantile((1 + coverage) / 2)
     mu = np.linspace(0.0, z, TABLE_POINTS)
-    # the upper end lies between mu and mu + z (the central region's), and not below the one-sided point
-    low, high = np.maximum(mu, 0.0), mu + z + 1e-9
-    for _ in range(45):
-        x2 = (low + high) / 2
-        enough = _content(mu, x2) >= coverage
-        high, low = np.where(enough, x2, high), np.where(enough, low, x2)
-    x2 = (low + high) / 2
-    x2[0], x2[-1] = normal_quantile(coverage), 2 * z
-    return np.maximum.accumulate(x2), mu
-
-
-def _content(mu: FloatArray, x2: FloatArray) -> FloatArray:
-    """Probability of the acceptance region that ends at x2."""
-    with np.errstate(divide="ignore", invalid="ignore"):
-        x1 = np.where(mu > 0, (mu**2 - (x2 - mu) ** 2) / (2 * mu), -np.inf)
-    return _cdf(x2 - mu) - _cdf(np.maximum(x1 - mu, -40.0))
+    inner = mu[1:-1]
+    x2 = inner + z
+    for _ in range(12):  # Newton's method on the probability of the region, from its central form
+        t2 = x2 - inner
+        t1 = (inner**2 - t2**2) / (2 * inner) - inner
+        rise = np.exp(-(t2**2) / 2) + np.exp(-(t1**2) / 2) * t2 / inner
+        excess = _cdf(t2) - _cdf(t1) - coverage
+        x2 = np.maximum(x2 - excess * math.sqrt(2 * math.pi) / rise, inner)
+    ends = np.concatenate([[normal_quantile(coverage)], x2, [2 * z]])
+    return np.maximum.accumulate(ends), mu
 
 
 def _cdf(x: FloatArray) -> FloatArray:

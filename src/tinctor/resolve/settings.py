@@ -64,7 +64,7 @@ class ResolveSettings:
     noise
         The noise model of a reading.
     coverage
-        Coverage probability of the interval, between 0.5 and 0.9999.
+        Coverage probability of the interval, between 0.68 and 0.9999.
     target_relative_u
         Relative standard uncertainty wanted; a component that misses it is flagged.
     """
@@ -106,8 +106,8 @@ def _number_faults(settings: ResolveSettings) -> list[Fault]:
     faults = []
     if not (math.isfinite(settings.absorbance_limit) and settings.absorbance_limit > 0):
         faults.append(Fault("absorbance-limit", ".absorbance_limit", f"must be above 0, found {settings.absorbance_limit}"))
-    if not 0.5 <= settings.coverage <= 0.9999:
-        faults.append(Fault("coverage", ".coverage", f"must lie between 0.5 and 0.9999, found {settings.coverage}"))
+    if not 0.68 <= settings.coverage <= 0.9999:
+        faults.append(Fault("coverage", ".coverage", f"must lie between 0.68 and 0.9999, found {settings.coverage}"))
     target = settings.target_relative_u
     if target is not None and not (math.isfinite(target) and target > 0):
         faults.append(Fault("target", ".target_relative_u", f"must be above 0, found {target}"))

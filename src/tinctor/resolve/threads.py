@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import os
-from concurrent.futures import ThreadPoolExecutor
 from contextlib import AbstractContextManager, nullcontext
 from typing import Any
 
@@ -20,6 +19,8 @@ class _Threads:
     """Threads for whole blocks, with the BLAS held to one thread each so that they do not fight over the cores."""
 
     def __init__(self, threads: int) -> None:
+        from concurrent.futures import ThreadPoolExecutor  # loaded for large batches only
+
         self._pool = ThreadPoolExecutor(threads)
         self._limits: Any = None
 
