@@ -88,5 +88,6 @@ def _conditions(components: Sequence[Component]) -> list[str]:
     return [
         f"{a.name!r} and {b.name!r}: {', '.join(found)}"
         for a, b in combinations(components, 2)
-        if (found := a.conditions.differences(b.conditions))
+        if not (a.analyte and a.analyte == b.analyte)  # forms of one analyte exist side by side
+        and (found := a.conditions.differences(b.conditions))
     ]

@@ -18,7 +18,7 @@ from tinctor.resolve.design import build_design, usable_wavelengths
 from tinctor.resolve.judge import status_of
 from tinctor.resolve.parts import Collector, strongest
 from tinctor.resolve.resolution import FlagCode, Resolution
-from tinctor.resolve.resolver import Resolver
+from tinctor.resolve.resolver import Readings, Resolver
 from tinctor.resolve.settings import ResolveSettings
 from tinctor.resolve.threads import workers
 from tinctor.resolve.uncertainty import Cell
@@ -68,7 +68,8 @@ def resolve(batch: SpectrumBatch, components: Sequence[Component], settings: Res
 
     def block(rows: slice) -> None:
         reading_u = None if batch.absorbance_u is None else batch.absorbance_u[rows, columns_used]
-        collector.put(rows, context.block(batch.absorbance[rows, columns_used], reading_u, _cell(batch, rows)))
+        readings = Readings(batch.absorbance[rows, columns_used], reading_u, _cell(batch, rows))
+        collector.put(rows, context.block(readings))
 
     starts = range(0, len(batch), BLOCK)
     with workers(len(starts)) as run:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import fields, replace
+from dataclasses import dataclass, fields, replace
 from typing import Final
 
 import numpy as np
@@ -23,12 +23,50 @@ from tinctor.resolve.resolution import Severity
 from tinctor.resolve.settings import ResolveSettings
 from tinctor.resolve.uncertainty import Cell, Estimates, estimates, limits_of_detection
 
-__all__ = ["Resolver"]
+__all__ = ["Readings", "Resolver"]
 
 #: Below this pivot the readings that are left do not determine a row's coefficients on the common basis.
 SMALLEST_PIVOT: Final = 1e-7
 #: Where no component has more than this share of its highest absorptivity, the solution should be clear.
 CLEAR_SHARE: Final = 0.01
+#: Lag-1 autocorrelation of the residuals in standard deviations of chance, above which it is taken into account.
+SIGNIFICANT_CORRELATION: Final = 2.5
+#: Results that judgement looks at.
+RESULTS_JUDGED: Final = (
+    "unconstrained",
+    "u",
+    "decision_limit",
+    "fitted_per_cm",
+    "background_value",
+    "background_u",
+    "points",
+    "selectivity",
+    "saturated",
+)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Readings:
+    """Measured rows (n, m) on a design's wavelengths: absorbance, perhaps its uncertainty, cell, saturated readings."""
+
+    absorbance: FloatArray
+    absorbance_u: FloatArray | None
+    cell: Cell
+    saturated: np.ndarray | None = None
+
+    def take(self, rows: np.ndarray) -> Readings:
+        """Return some of the rows."""
+        cell = Cell(*(getattr(self.cell, f.name)[rows] for f in fields(Cell)))
+        return Readings(
+            self.absorbance[rows],
+            None if self.absorbance_u is None else self.absorbance_u[rows],
+            cell,
+            None if self.saturated is None else self.saturated[rows],
+        )
+
+    def on(self, keep: np.ndarray) -> Readings:
+        """Return the readings at some of the wavelengths, none of them saturated."""
+        return Readings(self.absorbance[:, keep], None if self.absorbance_u is None else self.absorbance_u[:, keep], self.cell)
 
 
 class Resolver:
@@ -45,54 +83,92 @@ class Resolver:
         E = design.X[:, : design.p]
         self.clear = (np.abs(E) <= CLEAR_SHARE * E.max(axis=0, initial=0.0)).all(axis=1)
 
-    def block(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell) -> Part:
-        """Resolve the rows of one block."""
-        n, m = A.shape
+    def block(self, readings: Readings) -> Part:
+        """Resolve the rows of one block: those with saturated readings apart from those without."""
+        n, m = readings.absorbance.shape
         if self.design.unknowns > m:
             return _undetermined(self, n, float(m))
-        saturated = self.settings.absorbance_limit < A
+        saturated = readings.absorbance > self.settings.absorbance_limit
         masked = saturated.any(axis=1)
         if not masked.any():
-            return self._rows(A, reading_u, cell, None)
-        parts = []
-        order = np.concatenate([np.flatnonzero(~masked), np.flatnonzero(masked)])
-        for rows, mask in ((np.flatnonzero(~masked), None), (np.flatnonzero(masked), saturated)):
-            if rows.size:
-                part = self._rows(
-                    A[rows], None if reading_u is None else reading_u[rows], _take(cell, rows), None if mask is None else mask[rows]
-                )
-                parts.append(part)
-        return reordered(merged_parts(parts), np.argsort(order, kind="stable"))
+            return self._rows(readings)
+        clean, rest = np.flatnonzero(~masked), np.flatnonzero(masked)
+        parts = [self._rows(replace(readings.take(rest), saturated=saturated[rest]))]
+        if clean.size:
+            parts.insert(0, self._rows(readings.take(clean)))
+        return reordered(merged_parts(parts), np.argsort(np.concatenate([clean, rest]), kind="stable"))
 
-    def _rows(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell, saturated: np.ndarray | None) -> Part:
-        noise = self.settings.noise
-        keep = None if saturated is None else ~saturated
-        fit = fit_rows(self.columns, A, noise, keep, reading_u)
+    def _rows(self, readings: Readings) -> Part:
+        fit = self._fit(readings)
         poor = (fit.smallest_pivot < SMALLEST_PIVOT) | (fit.points < self.design.unknowns)
-        result = self._judged(A, reading_u, cell, saturated, fit)
+        result = self._judged(readings, fit)
         if poor.any():
-            self._replace_poor(result, np.flatnonzero(poor), A, reading_u, cell, saturated)
+            self._replace_poor(result, np.flatnonzero(poor), readings)
         return result
 
-    def _judged(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell, saturated: np.ndarray | None, fit: FitBlock) -> Part:
-        design, settings = self.design, self.settings
-        degrees = np.maximum(fit.points - design.unknowns, 0.0)
-        effective = self._effective_points(A, reading_u, fit, saturated)
+    def _fit(self, readings: Readings) -> FitBlock:
+        keep = None if readings.saturated is None else ~readings.saturated
+        return fit_rows(self.columns, readings.absorbance, self.settings.noise, keep, readings.absorbance_u)
+
+    def _judged(self, readings: Readings, fit: FitBlock) -> Part:
+        """Numbers and flags of fitted rows."""
+        settings, p = self.settings, self.design.p
+        degrees = np.maximum(fit.points - self.design.unknowns, 0.0)
+        effective = self._effective_points(readings, fit)
         reduced = np.divide(fit.chi_square, degrees, out=np.ones_like(degrees), where=degrees > 0)
         inflation = np.maximum(reduced, 1.0) * np.maximum(fit.points, 1.0) / effective
-        e = estimates(self.columns, fit, self.components, cell, settings.noise, inflation)
-        p = design.p
+        e = estimates(self.columns, fit, self.components, readings.cell, settings.noise, inflation)
+        tests = residual_tests(fit, self.design.unknowns, settings.noise, settings.limits)
+        result: Part = {
+            **self._concentrations(e, readings.cell),
+            "background_value": e.coefficients[:, p:],
+            "background_u": e.background_u,
+            "points": fit.points,
+            "residual_rms": np.sqrt(fit.squares / np.maximum(fit.points, 1.0)),
+            "chi_square": fit.chi_square,
+            "degrees_of_freedom": degrees,
+            "durbin_watson": durbin_watson(fit),
+            "condition_number": np.full(len(degrees), self.condition),
+            "effective_points": effective,
+            "optimality": fit.optimality,
+            "visible_residual": tests.visible,
+            "excess_residual": tests.excess,
+            "structure": tests.structure,
+            "structure_limit": tests.structure_limit,
+            "chi_square_limit": tests.chi_square_limit,
+            "saturated": readings.saturated,
+        }
+        clear_window, offset_bias = self._clear_window(readings, e)
+        shared = {name: result[name] for name in RESULTS_JUDGED}
+        result["severity"] = judge(
+            Evidence(
+                design=self.design,
+                components=self.components,
+                settings=settings,
+                u_at_zero=e.u_at_zero,
+                factor=readings.cell.factor,
+                tests=tests,
+                interferent=self.interferent,
+                clear_window=clear_window,
+                offset_bias=offset_bias,
+                **shared,
+            )
+        )
+        return result
+
+    def _concentrations(self, e: Estimates, cell: Cell) -> Part:
+        """Estimates with and without sign constraint, uncertainty, interval and limits."""
+        design, p = self.design, self.design.p
         u = np.sqrt(np.maximum(np.einsum("nii->ni", e.covariance), 0.0))
         decision, detection = limits_of_detection(e.u_at_zero, e.proportional)
-        low, high = non_negative_interval(e.concentration, u, settings.coverage)
+        low, high = non_negative_interval(e.concentration, u, self.settings.coverage)
         signed = np.append(design.non_negative, False) if design.shift else design.non_negative
-        constrained = nearest_nonnegative(e.coefficients, e.coefficient_covariance, signed)[:, :p] * cell.factor[:, None]
-        tests = residual_tests(fit, design.unknowns, settings.noise, settings.limits)
+        constrained = nearest_nonnegative(e.coefficients, e.coefficient_covariance, signed)[:, :p]
         selectivity = 1.0 / np.sqrt(e.variance_inflation)
         selectivity[:, self.dependent] = 0.0
-        result: Part = {
+        return {
             "unconstrained": e.concentration,
-            "concentration": constrained,
+            "concentration": constrained * cell.factor[:, None],
             "u": u,
             "low": low,
             "high": high,
@@ -102,100 +178,49 @@ class Resolver:
             "covariance": e.covariance,
             "relative_per_nm": e.relative_per_nm,
             "fitted_per_cm": e.coefficients[:, :p],
-            "background_value": e.coefficients[:, p:],
-            "background_u": e.background_u,
-            "points": fit.points,
-            "residual_rms": np.sqrt(fit.squares / np.maximum(fit.points, 1.0)),
-            "chi_square": fit.chi_square,
-            "degrees_of_freedom": degrees,
-            "durbin_watson": durbin_watson(fit),
-            "condition_number": np.full(len(A), self.condition),
-            "effective_points": effective,
-            "optimality": fit.optimality,
-            "visible_residual": tests.visible,
-            "excess_residual": tests.excess,
-            "structure": tests.structure,
-            "structure_limit": tests.structure_limit,
-            "chi_square_limit": tests.chi_square_limit,
             "selectivity": selectivity,
             "correlation": e.correlation,
-            "saturated": saturated,
         }
-        clear_window, offset_bias = self._clear_window(A, e, cell)
-        result["severity"] = judge(
-            Evidence(
-                design=design,
-                components=self.components,
-                settings=settings,
-                u_at_zero=e.u_at_zero,
-                factor=cell.factor,
-                tests=tests,
-                interferent=self.interferent,
-                clear_window=clear_window,
-                offset_bias=offset_bias,
-                **{
-                    name: result[name]
-                    for name in (
-                        "unconstrained", "u", "decision_limit", "fitted_per_cm", "background_value", "background_u",
-                        "points", "selectivity", "saturated",
-                    )
-                },
-            )
-        )  # fmt: skip
-        return result
 
-    def _effective_points(
-        self, A: FloatArray, reading_u: FloatArray | None, fit: FitBlock, saturated: np.ndarray | None
-    ) -> FloatArray:
+    def _effective_points(self, readings: Readings, fit: FitBlock) -> FloatArray:
         """Readings less what correlation between neighbours takes away, looked at only where it is significant."""
         effective = np.maximum(fit.points, 1.0)
-        significant = neighbour_correlation(fit) * np.sqrt(np.maximum(fit.points, 1.0)) > 2.5
+        significant = neighbour_correlation(fit) * np.sqrt(effective) > SIGNIFICANT_CORRELATION
         rows = np.flatnonzero(significant & (fit.points >= 12) & (fit.points - self.design.unknowns >= 6))
         if rows.size:
-            used = np.ones((rows.size, A.shape[1]), dtype=bool) if saturated is None else ~saturated[rows]
-            residual = _standardised_residual(
-                self.design, A[rows], fit.coordinates[rows], self.settings.noise, None if reading_u is None else reading_u[rows]
-            )
+            some = readings.take(rows)
+            residual = _standardised_residual(self.design, some, fit.coordinates[rows], self.settings.noise)
+            used = np.ones(residual.shape, dtype=bool) if some.saturated is None else ~some.saturated
             residual[~used] = 0.0
             effective[rows] = effective_points(residual, used, fit.points[rows])
         return effective
 
-    def _clear_window(self, A: FloatArray, e: Estimates, cell: Cell) -> tuple[FloatArray, FloatArray]:
+    def _clear_window(self, readings: Readings, e: Estimates) -> tuple[FloatArray, FloatArray]:
         """Mean residual where nothing absorbs, and the bias of an offset of that size; for designs without a background."""
         design = self.design
         if design.terms or design.shift or self.clear.sum() < 3:
             return np.zeros(0), np.zeros(0)
-        window = A[:, self.clear] - e.coefficients[:, : design.p] @ design.X[self.clear, : design.p].T
+        window = readings.absorbance[:, self.clear] - e.coefficients[:, : design.p] @ design.X[self.clear, : design.p].T
         mean = window.mean(axis=1)
         response = design.Rinv[: design.p] @ design.Q.sum(axis=0)
-        return mean, mean[:, None] * response * cell.factor[:, None]
+        return mean, mean[:, None] * response * readings.cell.factor[:, None]
 
-    def _replace_poor(
-        self,
-        result: Part,
-        poor: np.ndarray,
-        A: FloatArray,
-        reading_u: FloatArray | None,
-        cell: Cell,
-        saturated: np.ndarray | None,
-    ) -> None:
+    def _replace_poor(self, result: Part, poor: np.ndarray, readings: Readings) -> None:
         """Resolve rows anew, each group with the same readings left on a design of its own; changes `result` in place."""
-        masks = np.zeros((poor.size, A.shape[1]), dtype=bool) if saturated is None else saturated[poor]
+        masks = np.zeros((poor.size, len(self.design.X)), dtype=bool) if readings.saturated is None else readings.saturated[poor]
         distinct, group = np.unique(masks, axis=0, return_inverse=True)
         for k, mask in enumerate(distinct):
             rows, keep = poor[group.ravel() == k], ~mask
             reduced = self.design.on(keep)
             if reduced.unknowns == self.design.unknowns and reduced.shift:
                 reduced = replace(reduced, shift=False)  # a shift that the spectrum cannot show
-            context = Resolver(reduced, self.components, self.settings)
+            resolver = Resolver(reduced, self.components, self.settings)
             if reduced.unknowns > keep.sum() or (reduced.unknowns == self.design.unknowns and not mask.any()):
-                part = _undetermined(context, rows.size, float(keep.sum()))
+                part = _undetermined(resolver, rows.size, float(keep.sum()))
             else:
-                part = context.plain(A[rows][:, keep], None if reading_u is None else reading_u[rows][:, keep], _take(cell, rows))
+                left = readings.take(rows).on(keep)
+                part = resolver._judged(left, resolver._fit(left))
             put_rows(result, rows, part)
-
-    def plain(self, A: FloatArray, reading_u: FloatArray | None, cell: Cell) -> Part:
-        return self._judged(A, reading_u, cell, None, fit_rows(self.columns, A, self.settings.noise, None, reading_u))
 
 
 def _undetermined(context: Resolver, n: int, points: float) -> Part:
@@ -235,17 +260,16 @@ def _dependent_components(design: Design) -> np.ndarray:
     return np.asarray(involved[:p])
 
 
-def _standardised_residual(
-    design: Design, A: FloatArray, coordinates: FloatArray, noise: NoiseModel, reading_u: FloatArray | None
-) -> FloatArray:
+def _standardised_residual(design: Design, readings: Readings, coordinates: FloatArray, noise: NoiseModel) -> FloatArray:
     """Residuals over their standard deviation, less the part that a shift of the axis explains where one is declared."""
     y = coordinates[:, : design.Q.shape[1]]
     s = y @ design.Rinv[: design.p].T
     fitted, D = y @ design.Q.T, s @ design.slope.T
-    residual = A - fitted
+    residual = readings.absorbance - fitted
     if design.shift:
         residual -= coordinates[:, -1:] * D
-    variance = noise.reading_variance(np.minimum(fitted, 10.0)) if reading_u is None else reading_u**2
+    own = readings.absorbance_u
+    variance = noise.reading_variance(np.minimum(fitted, 10.0)) if own is None else own**2
     root = np.sqrt(variance + (s**2) @ design.shape_variance.T)
     residual /= root
     if noise.wavelength_nm > 0:
@@ -253,7 +277,3 @@ def _standardised_residual(
         size = np.vecdot(D, D)
         residual -= (np.vecdot(residual, D) / np.where(size > 0, size, 1.0))[:, None] * D
     return residual
-
-
-def _take(cell: Cell, rows: np.ndarray) -> Cell:
-    return Cell(*(getattr(cell, f.name)[rows] for f in fields(Cell)))
