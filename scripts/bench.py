@@ -1,0 +1,157 @@
+#!/usr/bin/env python3
+"""Speed and memory, as ratios taken in one run: one JSON line each.
+
+    python3 scripts/bench.py                 everything (about a minute)
+    python3 scripts/bench.py --spectra 20000 a smaller batch
+
+    batch    resolve a batch, complete results (both estimates, covariance, budget, interval, limits, flags), against a loop of
+             scipy.optimize.nnls that yields concentrations alone, and against the two bare matrix products A @ K and
+             A - C @ K.T over the same data in cache-sized chunks
+    cold     `tinctor resolve` of one sample from a cold start, against `python -c "import numpy, pydantic, typer"`
+    memory   peak memory that resolving adds, against the input array
+
+Needs what the tests need (scripts/test.py --setup-only makes the environment). Machines differ and are noisy: read the ratios.
+"""
+
+from __future__ import annotations
+
+import argparse
+import json
+import os
+import subprocess
+import sys
+import time
+from collections.abc import Callable
+from pathlib import Path
+
+sys.path.insert(0, str(Path(__file__).resolve().parent))
+from environment import ROOT, python_with_tinctor
+
+INSIDE = "TINCTOR_BENCH_INSIDE"
+WAVELENGTHS, COMPONENTS, REPEATS = 301, 3, 5
+
+
+def best(work: Callable[[], object], repeats: int = REPEATS) -> float:
+    """Return the shortest of several wall times, in seconds."""
+    times = []
+    for _ in range(repeats):
+        start = time.perf_counter()
+        work()
+        times.append(time.perf_counter() - start)
+    return min(times)
+
+
+def data(spectra: int):
+    """Return (batch, components, K): dye-like spectra of known mixtures, a tenth of them without the first dye."""
+    import numpy as np
+
+    from tinctor import Component, SpectrumBatch
+
+    rng = np.random.default_rng(11)
+    w = np.linspace(400.0, 700.0, WAVELENGTHS)
+    K = np.column_stack([30.0 * np.exp(-0.5 * ((w - centre) / 32.0) ** 2) + 1.0 for centre in (450.0, 530.0, 615.0)])
+    dyes = [
+        Component(f"dye-{k}", w, K[:, k], basis="mass", absorptivity_u=0.01 + 0 * w, scale_relative_u=0.01)
+        for k in range(COMPONENTS)
+    ]
+    c = rng.uniform(0.0, 0.03, (spectra, COMPONENTS))
+    c[rng.uniform(size=spectra) < 0.1, 0] = 0.0
+    A = np.empty((spectra, WAVELENGTHS))
+    for start in range(0, spectra, 4096):
+        part = slice(start, start + 4096)
+        A[part] = c[part] @ K.T + 0.0005 * rng.standard_normal((len(c[part]), WAVELENGTHS))
+    A.setflags(write=False)
+    return SpectrumBatch([str(k) for k in range(spectra)], w, A, path_length_u_cm=0.001), dyes, K
+
+
+def batch(spectra: int) -> dict[str, object]:
+    """Time the batch against the loop and the bare products."""
+    from scipy.optimize import nnls
+
+    from tinctor import resolve_batch
+
+    measured, dyes, K = data(spectra)
+    A = measured.absorbance
+
+    def loop() -> None:
+        for row in A:
+            nnls(K, row)
+
+    def bare() -> None:
+        for start in range(0, spectra, 256):
+            part = A[start : start + 256]
+            C = part @ K
+            part - C @ K.T
+
+    ours, loop_s, bare_s = best(lambda: resolve_batch(measured, dyes)), best(loop, 2), best(bare)
+    return {
+        "bench": "batch",
+        "spectra": spectra,
+        "wavelengths": WAVELENGTHS,
+        "components": COMPONENTS,
+        "resolve_s": round(ours, 3),
+        "nnls_loop_over_resolve": round(loop_s / ours, 2),
+        "resolve_over_bare_products": round(ours / bare_s, 1),
+        "spectra_per_s": round(spectra / ours),
+    }
+
+
+def cold() -> dict[str, object]:
+    """Time one sample from a cold start against the imports alone."""
+    python = sys.executable
+    sample = ["scripts/demo_data/single.csv", "--library", "palewater-dyehouse", "-c", "hollin-yellow,bramble-red,tarn-blue"]
+
+    def run(*arguments: str) -> Callable[[], object]:
+        return lambda: subprocess.run([python, *arguments], cwd=ROOT, stdout=subprocess.DEVNULL, check=True)
+
+    imports = best(run("-c", "import numpy, pydantic, typer"), 9)
+    table = best(run("-m", "tinctor", "resolve", *sample), 9)
+    as_json = best(run("-m", "tinctor", "resolve", *sample, "--format", "json"), 9)
+    return {
+        "bench": "cold",
+        "imports_s": round(imports, 3),
+        "resolve_json_over_imports": round(as_json / imports, 2),
+        "resolve_table_over_imports": round(table / imports, 2),
+    }
+
+
+def memory(spectra: int) -> dict[str, object]:
+    """Measure how much the peak resident memory of this fresh process grows over the input array."""
+    import resource
+
+    from tinctor import resolve_batch
+
+    measured, dyes, _ = data(spectra)
+    resolve_batch(type(measured)(measured.ids[:10], measured.wavelength_nm, measured.absorbance[:10]), dyes)
+    before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024
+    result = resolve_batch(measured, dyes)
+    after = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024
+    assert len(result) == spectra
+    size = measured.absorbance.nbytes
+    return {
+        "bench": "memory",
+        "input_mb": round(size / 1e6, 1),
+        "input_and_results_over_input": round((size + after - before) / size, 2),
+        "whole_process_over_input": round(after / size, 2),
+    }
+
+
+def main() -> int:
+    """Run each bench in a process of its own and print its line."""
+    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser.add_argument("--spectra", type=int, default=100_000, help="spectra of the batch (default 100000)")
+    parser.add_argument("--only", choices=["batch", "cold", "memory"], help="one bench")
+    options = parser.parse_args()
+    if os.environ.get(INSIDE):
+        result = {"batch": lambda: batch(options.spectra), "cold": cold, "memory": lambda: memory(options.spectra)}[options.only]()
+        print(json.dumps(result), flush=True)
+        return 0
+    python = python_with_tinctor(extra="dev")
+    for name in [options.only] if options.only else ["batch", "cold", "memory"]:
+        command = [str(python), str(Path(__file__).resolve()), "--only", name, "--spectra", str(options.spectra)]
+        subprocess.run(command, cwd=ROOT, env={**os.environ, INSIDE: "1"}, check=True)
+    return 0
+
+
+if __name__ == "__main__":
+    raise SystemExit(main())
