@@ -49,7 +49,7 @@ def compare(results: str) -> None:
         for row in sound
     )
     print(
-        f"\nThe baths are invented, so the truth is known: {inside} of {len(sound)} accepted figures have it in their 95 % interval."
+        f"\nThe baths are invented, so the truth is known: {inside} of {len(sound)} accepted figures hold it in their interval."
     )
     special = {row["id"]: row["special"] for row in truth.values() if row["special"] != "sound"}
     print("What was wrong with the samples, and what was said:")
