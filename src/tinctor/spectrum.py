@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from typing import Final
@@ -71,16 +72,20 @@ class Spectrum:
         absorbance_u: ArrayLike | None = None,
     ) -> None:
         axis, turned = ascending(wavelength_nm)
-        batch = SpectrumBatch(
-            ids=(id,),
-            wavelength_nm=axis,
-            absorbance=_one_row(absorbance, "absorbance", turned),
-            path_length_cm=[path_length_cm],
-            path_length_u_cm=[path_length_u_cm],
-            dilution_factor=[dilution_factor],
-            dilution_factor_u=[dilution_factor_u],
-            absorbance_u=None if absorbance_u is None else _one_row(absorbance_u, "absorbance_u", turned),
-        )
+        rows = {
+            "absorbance": _one_row(absorbance, "absorbance", turned),
+            "absorbance_u": None if absorbance_u is None else _one_row(absorbance_u, "absorbance_u", turned),
+        }
+        cell = {
+            "path_length_cm": [path_length_cm],
+            "path_length_u_cm": [path_length_u_cm],
+            "dilution_factor": [dilution_factor],
+            "dilution_factor_u": [dilution_factor_u],
+        }
+        try:
+            batch = SpectrumBatch((id,), axis, **rows, **cell)  # type: ignore[arg-type]
+        except InputError as error:
+            raise InputError([replace(fault, path=_of_one(fault.path)) for fault in error.faults]) from error
         for name, value in (
             ("id", id),
             ("wavelength_nm", batch.wavelength_nm),
@@ -238,6 +243,11 @@ def replace_absorbance(batch: SpectrumBatch, absorbance: ArrayLike) -> SpectrumB
 def same_axis(one_nm: FloatArray, other_nm: FloatArray) -> bool:
     """Return whether two axes agree point for point."""
     return one_nm is other_nm or (one_nm.size == other_nm.size and bool(np.all(np.abs(one_nm - other_nm) <= SAME_WAVELENGTH_NM)))
+
+
+def _of_one(path: str) -> str:
+    """A path into a batch of one as a path into the spectrum: `.absorbance[0][17]` is its `.absorbance[17]`."""
+    return re.sub(r"^\.(\w+)\[0\]", r".\1", path).replace(".ids", ".id")
 
 
 def _one_row(values: ArrayLike, name: str, turned: bool) -> FloatArray:

@@ -187,7 +187,8 @@ def _with_cells(spectra: list[Spectrum], samples: Path | None, *values: float | 
         try:
             changed.append(replace(spectrum, **given))
         except InputError as error:
-            raise error.at(f"--{min(given).replace('_', '-')}" if len(given) == 1 else "options") from error
+            places = [replace(f, path="--" + f.path.lstrip(".").replace("_", "-")) for f in error.faults]
+            raise InputError(places) from error
     return changed
 
 

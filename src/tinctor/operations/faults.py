@@ -80,7 +80,7 @@ def error_body(error: TinctorError) -> dict[str, Any]:
         "schema": "error/1",
         "status": 422,
         "code": faults[0].code if total == 1 else ("undetermined" if isinstance(error, UndeterminedError) else "faults"),
-        "message": str(faults[0]) if total == 1 else (f"{total} faults in the request" if total else str(error)),
+        "message": faults[0].message if total == 1 else (f"{total} faults in the request" if total else str(error)),
         "faults": [{"code": f.code, "path": f.path, "message": f.message, "hint": f.hint} for f in faults],
         "more_faults": more,
     }

@@ -153,7 +153,7 @@ def _fit(r: Resolution, row: int) -> FitResult:
         chi_square=float(r.chi_square[row]),
         degrees_of_freedom=int(r.degrees_of_freedom[row]),
         durbin_watson=float(r.durbin_watson[row]) if r.degrees_of_freedom[row] > 0 else None,
-        condition_number=float(r.condition_number[row]),
+        condition_number=_finite(r.condition_number[row]),
         effective_points=float(r.effective_points[row]),
         chi_square_limit=_finite(r.chi_square_limit[row]),
         residual_structure=float(r.structure[row]),

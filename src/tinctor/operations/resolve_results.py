@@ -71,7 +71,7 @@ class FitResult(ResponseModel):
     chi_square: float
     degrees_of_freedom: int
     durbin_watson: float | None
-    condition_number: float
+    condition_number: float | None
     effective_points: float
     chi_square_limit: float | None = Field(description="chi-square above which the model is questioned, model error allowed for")
     residual_structure: float = Field(description="root mean square of the smooth part of the residual, in absorbance")

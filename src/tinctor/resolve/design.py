@@ -73,6 +73,11 @@ class Design:
         """Number of coefficients fitted, the shift included."""
         return int(self.independent.sum()) + int(self.shift)
 
+    @property
+    def asked(self) -> int:
+        """Number of coefficients asked for, dependent ones and the shift included: so many readings are needed."""
+        return self.X.shape[1] + int(self.shift)
+
     def on(self, keep: np.ndarray) -> Design:
         """Return the design restricted to the wavelengths where `keep` is true, factored anew."""
         return _factored(

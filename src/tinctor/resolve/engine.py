@@ -27,7 +27,7 @@ from tinctor.spectrum import SpectrumBatch
 __all__ = ["resolve"]
 
 #: Spectra per block: what one thread works on at a time.
-BLOCK: Final = 4096
+BLOCK: Final = 8192
 
 
 def resolve(batch: SpectrumBatch, components: Sequence[Component], settings: ResolveSettings | None = None) -> Resolution:

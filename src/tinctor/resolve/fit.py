@@ -22,7 +22,7 @@ from tinctor.resolve.small import Cholesky, packed_index, packed_pairs
 __all__ = ["FitBlock", "FitColumns", "fit_columns", "fit_rows"]
 
 #: Spectra per chunk: a handful of (CHUNK, 300) work arrays fit the cache.
-CHUNK: Final = 1024
+CHUNK: Final = 512
 
 LOG2_10: Final = math.log2(10.0)
 

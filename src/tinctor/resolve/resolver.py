@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, fields, replace
+from functools import cached_property
 from typing import Final
 
 import numpy as np
@@ -74,19 +75,23 @@ class Resolver:
 
     def __init__(self, design: Design, components: Sequence[Component], settings: ResolveSettings) -> None:
         self.design, self.components, self.settings = design, components, settings
-        self.columns: FitColumns = fit_columns(design)
-        self.interferent: Interferent | None = interferent(design) if design.unknowns <= design.wavelength_nm.size else None
-        unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
-        sizes = np.linalg.svd(unit[:, design.independent], compute_uv=False) if design.Q.shape[1] else np.ones(1)
-        self.condition = float(sizes[0] / sizes[-1])
+        m = design.wavelength_nm.size
+        self.determined = m > 0 and design.asked <= m
+        self.interferent: Interferent | None = interferent(design) if self.determined else None
+        self.condition = _condition(design) if self.determined else np.nan
         self.dependent = _dependent_components(design)
         E = design.X[:, : design.p]
         self.clear = (np.abs(E) <= CLEAR_SHARE * E.max(axis=0, initial=0.0)).all(axis=1)
 
+    @cached_property
+    def columns(self) -> FitColumns:
+        """Column products of the design."""
+        return fit_columns(self.design)
+
     def block(self, readings: Readings) -> Part:
         """Resolve the rows of one block: those with saturated readings apart from those without."""
         n, m = readings.absorbance.shape
-        if self.design.unknowns > m:
+        if not self.determined:
             return _undetermined(self, n, float(m))
         saturated = readings.absorbance > self.settings.absorbance_limit
         masked = saturated.any(axis=1)
@@ -100,7 +105,7 @@ class Resolver:
 
     def _rows(self, readings: Readings) -> Part:
         fit = self._fit(readings)
-        poor = (fit.smallest_pivot < SMALLEST_PIVOT) | (fit.points < self.design.unknowns)
+        poor = (fit.smallest_pivot < SMALLEST_PIVOT) | (fit.points < self.design.asked)
         result = self._judged(readings, fit)
         if poor.any():
             self._replace_poor(result, np.flatnonzero(poor), readings)
@@ -215,7 +220,7 @@ class Resolver:
             if reduced.unknowns == self.design.unknowns and reduced.shift:
                 reduced = replace(reduced, shift=False)  # a shift that the spectrum cannot show
             resolver = Resolver(reduced, self.components, self.settings)
-            if reduced.unknowns > keep.sum() or (reduced.unknowns == self.design.unknowns and not mask.any()):
+            if reduced.asked > keep.sum() or (reduced.unknowns == self.design.unknowns and not mask.any()):
                 part = _undetermined(resolver, rows.size, float(keep.sum()))
             else:
                 left = readings.take(rows).on(keep)
@@ -246,6 +251,13 @@ def _undetermined(context: Resolver, n: int, points: float) -> Part:
     grade = np.full(n, Severity.REFUSAL, dtype=np.int8)
     result["severity"] = {"range-not-covered" if points == 0 else "too-few-points": grade}
     return result
+
+
+def _condition(design: Design) -> float:
+    """Ratio of the largest to the smallest singular value of the independent columns at unit norm."""
+    unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
+    sizes = np.linalg.svd(unit[:, design.independent], compute_uv=False)
+    return float(sizes[0] / sizes[-1]) if sizes.size else np.nan
 
 
 def _dependent_components(design: Design) -> np.ndarray:
