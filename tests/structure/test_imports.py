@@ -13,7 +13,7 @@ SRC = Path(__file__).resolve().parents[2] / "src" / "tinctor"
 #: Level of each package; a module may import from lower levels, from its own package, and from no sibling of its level.
 LEVELS = {
     "version": 0, "errors": 0, "units": 1, "arrays": 1, "axis": 2, "noise": 3, "spectrum": 3, "component": 3,
-    "files": 4, "library": 5, "resolve": 4, "pls": 4, "plan": 6, "operations": 7, "report": 8, "service": 9, "cli": 10, "__main__": 11,
+#: Level of each package: a module may import from lower levels and from its own package, never from a sibling of its level.
 }  # fmt: skip
 
 #: Pairs that share a level or lie below one another by number, and still must not meet.

@@ -76,7 +76,7 @@ class Design:
     @property
     def asked(self) -> int:
         """Number of coefficients asked for, dependent ones and the shift included: so many readings are needed."""
-        return self.X.shape[1] + int(self.shift)
+        return int(self.X.shape[1]) + int(self.shift)
 
     def on(self, keep: np.ndarray) -> Design:
         """Return the design restricted to the wavelengths where `keep` is true, factored anew."""

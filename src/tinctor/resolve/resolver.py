@@ -26,8 +26,11 @@ from tinctor.resolve.uncertainty import Cell, Estimates, estimates, limits_of_de
 
 __all__ = ["Readings", "Resolver"]
 
-#: Below this pivot the readings that are left do not determine a row's coefficients on the common basis.
-SMALLEST_PIVOT: Final = 1e-7
+#: Below this pivot a spectrum with saturated readings is resolved on a basis made for the readings left: the common one
+#: would cost it digits.
+SMALLEST_PIVOT: Final = 1e-3
+#: Below this one the readings do not determine the coefficients.
+SINGULAR_PIVOT: Final = 1e-10
 #: Where no component has more than this share of its highest absorptivity, the solution should be clear.
 CLEAR_SHARE: Final = 0.01
 #: Lag-1 autocorrelation of the residuals in standard deviations of chance, above which it is taken into account.
@@ -105,7 +108,8 @@ class Resolver:
 
     def _rows(self, readings: Readings) -> Part:
         fit = self._fit(readings)
-        poor = (fit.smallest_pivot < SMALLEST_PIVOT) | (fit.points < self.design.asked)
+        smallest = SINGULAR_PIVOT if readings.saturated is None else SMALLEST_PIVOT
+        poor = (fit.smallest_pivot < smallest) | (fit.points < self.design.asked)
         result = self._judged(readings, fit)
         if poor.any():
             self._replace_poor(result, np.flatnonzero(poor), readings)
