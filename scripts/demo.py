@@ -48,9 +48,7 @@ def compare(results: str) -> None:
         float(row["interval_low"]) <= float(truth[row["id"]][f"{row['component']}_g_per_L"]) <= float(row["interval_high"])
         for row in sound
     )
-    print(
-        f"\nThe baths are invented, so the truth is known: {inside} of {len(sound)} accepted figures hold it in their interval."
-    )
+    print(f"\nThe baths are invented, so the truth is known: {inside} of {len(sound)} accepted figures hold it in their interval.")
     special = {row["id"]: row["special"] for row in truth.values() if row["special"] != "sound"}
     print("What was wrong with the samples, and what was said:")
     for sample, what in special.items():

@@ -102,9 +102,8 @@ def test_units_of_concentration_differ_by_their_factor_alone() -> None:
     from tinctor.operations.registry import run_document
 
     spectrum = {"id": "a", "wavelength_nm": W.tolist(), "absorbance": measured(1).absorbance[0].tolist()}
-    component = {
-        "name": "c", "wavelength_nm": W.tolist(), "mass_absorptivity": dyes()[0].absorptivity.tolist(), "molar_mass_g_per_mol": 500.0,
-    }  # fmt: skip
+    absorptivity = dyes()[0].absorptivity.tolist()
+    component = {"name": "c", "wavelength_nm": W.tolist(), "mass_absorptivity": absorptivity, "molar_mass_g_per_mol": 500.0}
 
     def concentration(unit: str) -> float:
         request = {"schema": "resolve/1", "components": [component], "spectra": [spectrum], "concentration_unit": unit}

@@ -21,7 +21,7 @@ from tinctor.spectrum import Spectrum
 __all__ = ["read_delimited"]
 
 #: Faults that say "this is not the layout" and not "this is what is wrong with it": shown only when there is nothing better.
-SHAPE_FAULTS = frozenset({"layout", "no-header", "unknown-column", "ragged"})
+SHAPE_FAULTS = frozenset({"layout", "no-header", "ragged"})
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -71,7 +71,7 @@ def _rows(cells: Cells, decimal: str, source: str, _: str) -> list[Spectrum]:
     """A header whose cells from some column on are wavelengths; one spectrum a row, its id first."""
     header = cells.rows[0]
     first = next((k for k in range(1, len(header)) if is_number(header[k], decimal)), None)
-    if first is None:
+    if first is None or is_number(header[0], decimal):
         raise _fault("layout", source, cells, 0, 0, "expected wavelengths in the header row, found none")
     keys = header[1:first]
     for k, key in enumerate(keys, start=1):

@@ -87,6 +87,8 @@ def cells_of(text: str, delimiter: str, source: str) -> Cells:
     while rows and not any(rows[-1]):
         rows.pop()
         lines.pop()
+    if not rows:
+        raise UnreadableFileError.single("empty-file", source, "the file holds no cells: expected wavelengths and absorbances")
     for row, line in zip(rows, lines, strict=True):
         if not any(row):
             raise UnreadableFileError.single(
