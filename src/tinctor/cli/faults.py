@@ -52,7 +52,7 @@ def guarded(*, as_json: bool = False) -> Iterator[None]:
         # the reader of our output has left; nothing more can be said to it
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         raise typer.Exit(Exit.DONE) from None
-    except (typer.Exit, typer.Abort, KeyboardInterrupt):
+    except (typer.Exit, typer.Abort, typer.BadParameter, KeyboardInterrupt):
         raise
     except Exception as error:
         if os.environ.get("TINCTOR_DEBUG"):

@@ -103,7 +103,7 @@ def run(request: ResolveRequest) -> ResolveResponse:
     results: list[SpectrumResult | None] = [None] * len(spectra)
     for places in _by_axis(spectra):
         batch = SpectrumBatch.of([spectra[k] for k in places])
-        resolution = resolve(batch, components, settings)
+        (resolution,) = gather([("$", lambda batch=batch: resolve(batch, components, settings))])
         _compare_conditions(resolution, request.conditions)
         for k, result in zip(places, response_results(resolution, factors, units), strict=True):
             results[k] = result

@@ -29,7 +29,13 @@ def batch_notes(
     """Return words and severities, (p,) or scalar, of the flags that hold for the whole batch."""
     words: dict[FlagCode, str] = {}
     grades: dict[FlagCode, np.ndarray] = {}
-    if (wanted & ~inside).any():
+    if not wanted.any():
+        words["range-not-covered"] = (
+            f"no reading lies in the range asked for, {settings.wavelength_range_nm}: "
+            f"measured {wavelength_nm[0]:g} to {wavelength_nm[-1]:g} nm"
+        )
+        grades["range-not-covered"] = np.array(Severity.REFUSAL, dtype=np.int8)
+    elif (wanted & ~inside).any():
         words["range-not-covered"], grades["range-not-covered"] = _not_covered(wavelength_nm, wanted, inside, components, settings)
     coarse = [c.name for c in components if inside.any() and coarseness(c, wavelength_nm[inside]) > COARSE]
     if coarse:
