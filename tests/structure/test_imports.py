@@ -34,7 +34,7 @@ DOMAIN = {"spectrum", "component", "noise", "arrays", "axis", "errors", "units",
 THIRD_PARTY = {
     "version": set(), "errors": set(), "units": set(), "arrays": {"numpy"}, "axis": {"numpy"}, "noise": {"numpy"},
     "spectrum": {"numpy"}, "component": {"numpy"}, "files": {"numpy"}, "library": {"numpy", "pydantic"},
-    "resolve": {"numpy", "threadpoolctl"}, "operations": {"numpy", "pydantic"}, "report": {"rich", "numpy"},
+    "resolve": {"numpy", "threadpoolctl"}, "operations": {"numpy", "pydantic"}, "report": set(),
     "cli": {"typer", "click"}, "__main__": set(), "__init__": set(),
 }  # fmt: skip
 

@@ -2,24 +2,22 @@
 
 from __future__ import annotations
 
-import io
+import textwrap
 from typing import Final
-
-from rich.box import SIMPLE_HEAD
-from rich.console import Console
-from rich.padding import Padding
-from rich.table import Table
-from rich.text import Text
 
 from tinctor.operations.resolve import ResolveResponse
 from tinctor.operations.resolve_results import ComponentResult, SpectrumResult
 from tinctor.report.rounding import rounded, significant
+from tinctor.report.text_table import Cell, styled, text_table
 
 __all__ = ["resolve_table"]
 
-#: Emphasis beside the words, never instead of them; blue and orange are told apart with every kind of colour vision.
-STYLES: Final = {"accepted": "", "flagged": "bold dark_orange", "refused": "bold reverse"}
-GRADES: Final = {"info": "", "warning": "bold dark_orange", "refusal": "bold reverse"}
+#: Emphasis beside the words, never instead of them: bold and reverse, which need no colour vision.
+BOLD, REVERSE = "\x1b[1m", "\x1b[7m"
+STYLES: Final = {"accepted": "", "flagged": BOLD, "refused": REVERSE}
+GRADES: Final = {"info": "", "warning": BOLD, "refusal": REVERSE}
+#: Width of the words below the table where the terminal's is not known.
+PIPE_WIDTH: Final = 110
 
 
 def resolve_table(response: ResolveResponse, *, width: int | None = None, colour: bool = False) -> str:
@@ -28,41 +26,40 @@ def resolve_table(response: ResolveResponse, *, width: int | None = None, colour
     Parameters
     ----------
     width
-        Columns of the terminal; as wide as needed when not given.
+        Columns of the terminal, to which the words are wrapped; 110 when not given. The table is as wide as it needs to be.
     colour
         Whether to put in terminal codes for emphasis.
     """
-    table = Table(box=SIMPLE_HEAD, pad_edge=False, show_edge=False)
-    table.add_column("sample", no_wrap=True)
     first = response.results[0]
-    for c in first.components:
-        table.add_column(f"{c.name}\n{c.unit}", justify="right", no_wrap=True)
-    for analyte in first.analytes:
-        table.add_column(f"total {analyte.name}\n{analyte.unit}", justify="right", no_wrap=True)
-    table.add_column("status", no_wrap=True)
+    heading = [
+        ("", "sample"),
+        *((c.name, f"{c.unit}  ") for c in first.components),
+        *((f"total {a.name}", f"{a.unit}  ") for a in first.analytes),
+        ("", "status"),
+    ]
+    rows = [_row(result) for result in response.results]
+    right = [False, *([True] * (len(heading) - 2)), False]
+    lines = text_table(heading, rows, right=right, colour=colour)
     for result in response.results:
-        totals = [_cell(a.concentration, a.u, None) for a in result.analytes]
-        table.add_row(result.id, *map(_component, result.components), *totals, Text(result.status, style=STYLES[result.status]))
-    out = io.StringIO()
-    natural = 40 + 30 * (len(first.components) + len(first.analytes) + 1)
-    console = Console(file=out, width=width or max(natural, 100), force_terminal=colour, highlight=False, legacy_windows=False)
-    console.print(table)
-    _print_flags(console, response.results)
-    for line in _closing(response):
-        console.print(line, markup=False)
-    return "\n".join(line.rstrip() for line in out.getvalue().splitlines()) + "\n"
+        lines += _flag_lines(result, width or PIPE_WIDTH, colour=colour)
+    return "\n".join([*lines, *_closing(response)]) + "\n"
 
 
-def _component(c: ComponentResult) -> Text:
-    if c.concentration is None:
-        return Text("refused  ", style=STYLES["refused"])
+def _row(result: SpectrumResult) -> list[Cell]:
+    totals = [
+        (f"{_value(a.concentration, a.u, None)}  ", STYLES["refused"] if a.status == "refused" else "") for a in result.analytes
+    ]
+    return [(result.id, ""), *map(_component, result.components), *totals, (result.status, STYLES[result.status])]
+
+
+def _component(c: ComponentResult) -> Cell:
     not_detected = c.unconstrained is not None and c.decision_limit is not None and c.unconstrained < c.decision_limit
-    cell = _cell(c.concentration, c.u, c.detection_limit if not_detected else None)
-    return Text(f"{cell} *", style=STYLES["flagged"]) if c.status == "flagged" else Text(f"{cell}  ")
+    value = _value(c.concentration, c.u, c.detection_limit if not_detected else None)
+    return f"{value} {'*' if c.status == 'flagged' else ' '}", STYLES[c.status]
 
 
-def _cell(value: float | None, u: float | None, below: float | None) -> str:
-    """A value with its uncertainty, or that it lies below the detection limit."""
+def _value(value: float | None, u: float | None, below: float | None) -> str:
+    """A value with its uncertainty, or that it lies below the detection limit, or that there is none."""
     if value is None or u is None:
         return "refused"
     if below is not None:
@@ -71,16 +68,21 @@ def _cell(value: float | None, u: float | None, below: float | None) -> str:
     return f"{shown} ± {shown_u}"
 
 
-def _print_flags(console: Console, results: list[SpectrumResult]) -> None:
+def _flag_lines(result: SpectrumResult, width: int, *, colour: bool) -> list[str]:
     """Flags under the name of their sample; what merely says "not detected" is in the table already."""
-    for result in results:
-        flags = [flag for flag in result.flags if flag.code != "below-decision-limit"]
-        if not flags:
-            continue
-        console.print(Text(f"\n{result.id}", style="bold"))
-        for flag in flags:
-            head = Text(f"{flag.severity}: {flag.code}. ", style=GRADES[flag.severity])
-            console.print(Padding(head + Text(flag.message), (0, 0, 0, 2)))
+    flags = [flag for flag in result.flags if flag.code != "below-decision-limit"]
+    if not flags:
+        return []
+    lines = ["", styled(result.id, BOLD, colour=colour)]
+    for flag in flags:
+        head = f"{flag.severity}: {flag.code}."
+        wrapped = textwrap.wrap(
+            f"{head} {flag.message}", max(width, 40), initial_indent="  ", subsequent_indent="  ", break_on_hyphens=False
+        )
+        if wrapped[0].startswith(f"  {head}"):
+            wrapped[0] = f"  {styled(head, GRADES[flag.severity], colour=colour)}{wrapped[0][2 + len(head) :]}"
+        lines += wrapped
+    return lines
 
 
 def _closing(response: ResolveResponse) -> list[str]:
@@ -90,9 +92,7 @@ def _closing(response: ResolveResponse) -> list[str]:
         "value ± standard uncertainty (k = 1); < detection limit: not detected; * needs a look",
         ", ".join(f"{count} {word}" for word, count in counts.items() if count) + f" of {len(response.results)} spectra",
     ]
-    undeclared = {
-        source: [c.name for c in response.results[0].components if source in c.not_declared]
-        for source in ("library-scale", "library-shape")
-    }
+    sources = ("library-scale", "library-shape")
+    undeclared = {source: [c.name for c in response.results[0].components if source in c.not_declared] for source in sources}
     lines += [f"not in the uncertainty, because nobody has stated it: {s} of {', '.join(n)}" for s, n in undeclared.items() if n]
     return lines
