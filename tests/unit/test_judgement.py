@@ -112,6 +112,7 @@ def test_a_collinear_pair_is_refused_and_the_third_component_stands() -> None:
     result = resolved(mixture(0.02, 0.015, 0.018), [YELLOW, RED, twin, BLUE])
     assert result.status.tolist() == [[Status.ACCEPTED, Status.REFUSED, Status.REFUSED, Status.ACCEPTED]]
     assert grade(result, "collinear", 1) is Severity.REFUSAL
+    assert grade(result, "below-decision-limit", 1) is Severity.NONE  # nothing is said about a figure that is not given
     without = resolved(mixture(0.02, 0.015, 0.018))
     assert result.unconstrained[0, [0, 3]] == pytest.approx(without.unconstrained[0, [0, 2]], rel=1e-9)
 

@@ -78,6 +78,7 @@ def resolve(batch: SpectrumBatch, components: Sequence[Component], settings: Res
     severity: dict[FlagCode, np.ndarray] = merged.pop("severity")
     for code, grade in common.items():
         severity[code] = strongest(severity.get(code), grade, len(batch))
+    severity = {code: grades for code, grades in severity.items() if grades.any()}
     return Resolution(
         ids=batch.ids,
         components=tuple(components),

@@ -68,6 +68,11 @@ def judge(evidence: Evidence) -> dict[FlagCode, np.ndarray]:
         "below-decision-limit": _where(evidence.unconstrained < evidence.decision_limit, Severity.INFO),
         "target-not-met": _target_not_met(evidence),
     }
+    n, p = evidence.unconstrained.shape
+    refused = status_of(rules, n, p) == Status.REFUSED
+    for code, grades in rules.items():
+        if code != "saturated" and grades.ndim == 2:
+            grades[refused & (grades < Severity.REFUSAL)] = Severity.NONE  # nothing is said about a figure that is not given
     return {code: severity for code, severity in rules.items() if severity.any()}
 
 

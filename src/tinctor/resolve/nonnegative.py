@@ -120,13 +120,17 @@ def nearest_nonnegative(estimate: FloatArray, covariance: FloatArray, signed: np
     rows = np.flatnonzero((estimate[:, signed] < 0).any(axis=1))
     if rows.size == 0:
         return result
+    # a coefficient without variance belongs to a column left out as dependent: it is zero and stays so
+    free = np.flatnonzero((np.einsum("nii->ni", covariance[rows]) > 0).any(axis=0))
+    z, C, signed = estimate[np.ix_(rows, free)], covariance[np.ix_(rows, free, free)], signed[free]
     if signed.sum() <= ENUMERATED:
-        result[rows] = _nearest_enumerated(estimate[rows], covariance[rows], signed)
-        return result
-    unit = np.sqrt(np.einsum("nii->ni", covariance[rows]))
-    metric = np.linalg.inv(covariance[rows] / (unit[:, :, None] * unit[:, None, :]))
-    scaled = estimate[rows] / unit
-    result[rows] = _lawson_hanson(metric, np.einsum("nij,nj->ni", metric, scaled), signed) * unit
+        found = _nearest_enumerated(z, C, signed)
+    else:
+        unit = np.sqrt(np.einsum("nii->ni", C))
+        # the pseudo-inverse, as nearly collinear columns may leave the metric singular to rounding
+        metric = np.linalg.pinv(C / (unit[:, :, None] * unit[:, None, :]), rcond=1e-15, hermitian=True)
+        found = _lawson_hanson(metric, np.einsum("nij,nj->ni", metric, z / unit), signed) * unit
+    result[np.ix_(rows, free)] = found
     return result
 
 

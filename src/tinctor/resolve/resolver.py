@@ -253,7 +253,7 @@ def _undetermined(context: Resolver, n: int, points: float) -> Part:
     result.update(points=np.full(n, points), condition_number=np.full(n, context.condition), effective_points=np.full(n, points))
     result["saturated"] = None
     grade = np.full(n, Severity.REFUSAL, dtype=np.int8)
-    result["severity"] = {"range-not-covered" if points == 0 else "too-few-points": grade}
+    result["severity"] = {"too-few-points": grade}
     return result
 
 
