@@ -19,6 +19,8 @@ from pathlib import Path
 
 ROOT = Path(__file__).resolve().parents[1]
 ENVIRONMENT = ROOT / ".venv"
+#: Set in the environment of a script that runs in that environment already.
+INSIDE = "TINCTOR_INSIDE_ENVIRONMENT"
 
 
 def python_with_tinctor(extra: str = "") -> Path:
@@ -48,6 +50,14 @@ def python_with_tinctor(extra: str = "") -> Path:
         raise SystemExit("pip could not install tinctor: see its message above; a package index must be reachable")
     stamp.write_text(digest)
     return python
+
+
+def inside(extra: str = "") -> None:
+    """Go on in the environment's Python: for scripts that need more than the standard library. Returns when already there."""
+    if os.environ.get(INSIDE):
+        return
+    python = str(python_with_tinctor(extra))
+    raise SystemExit(subprocess.run([python, *sys.argv], env={**os.environ, INSIDE: "1"}, check=False).returncode)
 
 
 if __name__ == "__main__":

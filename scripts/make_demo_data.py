@@ -7,7 +7,7 @@
 A dye is a sum of bands that are Gaussian in wavenumber. The laboratory's records differ from the true spectra by the
 error of their stock solution and by noise; the samples are then measured as a bench instrument would, with shifts of the
 wavelength axis, offsets, cells and dilutions that are a little off, photometric noise and stray light.
-Needs numpy (the environment of scripts/test.py has it).
+It makes the environment it needs, as scripts/demo.py does.
 """
 
 from __future__ import annotations
@@ -19,6 +19,12 @@ import json
 import sys
 from dataclasses import dataclass, field
 from pathlib import Path
+
+if __name__ == "__main__":
+    sys.path.insert(0, str(Path(__file__).resolve().parent))
+    from environment import inside
+
+    inside()
 
 import numpy as np
 

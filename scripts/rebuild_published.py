@@ -10,7 +10,7 @@ Inputs, in DIR:
     haemoglobin/hb-oxy-prahl.csv, hb-deoxy-prahl.csv        S. Prahl's compilation as carried by the package mne (BSD-3)
     pah/*.csv                                               Province of British Columbia, bcgov/pahwq (Apache-2.0)
 
-Needs numpy (the environment of scripts/test.py has it).
+It makes the environment it needs, as scripts/demo.py does.
 """
 
 from __future__ import annotations
@@ -20,6 +20,12 @@ import csv
 import sys
 from dataclasses import dataclass, field
 from pathlib import Path
+
+if __name__ == "__main__":
+    sys.path.insert(0, str(Path(__file__).resolve().parent))
+    from environment import inside
+
+    inside()
 
 import numpy as np
 

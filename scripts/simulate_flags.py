@@ -20,9 +20,14 @@ import sys
 from dataclasses import dataclass
 from pathlib import Path
 
+if __name__ == "__main__":
+    sys.path.insert(0, str(Path(__file__).resolve().parent))
+    from environment import inside
+
+    inside()
+
 import numpy as np
 
-sys.path.insert(0, str(Path(__file__).resolve().parents[1] / "src"))
 from tinctor import Component, NoiseModel, Resolution, ResolveSettings, SpectrumBatch, resolve_batch
 
 W = np.linspace(400.0, 700.0, 301)
