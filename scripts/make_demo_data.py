@@ -18,9 +18,10 @@ import io
 import json
 import sys
 from dataclasses import dataclass, field
+from importlib.util import find_spec
 from pathlib import Path
 
-if __name__ == "__main__":
+if __name__ == "__main__" and find_spec("numpy") is None:
     sys.path.insert(0, str(Path(__file__).resolve().parent))
     from environment import inside
 

@@ -22,9 +22,10 @@ from __future__ import annotations
 import argparse
 import sys
 from dataclasses import dataclass
+from importlib.util import find_spec
 from pathlib import Path
 
-if __name__ == "__main__":
+if __name__ == "__main__" and find_spec("tinctor") is None:
     sys.path.insert(0, str(Path(__file__).resolve().parent))
     from environment import inside
 
