@@ -40,7 +40,9 @@ def resolve(
     background: Annotated[
         list[str] | None,
         typer.Option(
-            "--background", "-b", help="Terms fitted beside the components: offset, slope, scatter, shift; none for none. [offset]"
+            "--background",
+            "-b",
+            help="Terms fitted beside the components: offset, slope, scatter, shift; none for none (default offset).",
         ),
     ] = None,
     range_nm: Annotated[
@@ -48,17 +50,25 @@ def resolve(
     ] = None,
     wavelengths_nm: Annotated[str | None, typer.Option(help="Use these wavelengths only, in nm, separated by commas.")] = None,
     absorbance_limit: Annotated[float, typer.Option(help="Readings above this absorbance are not used.")] = 2.0,
-    noise_floor: Annotated[float | None, typer.Option(help="Standard uncertainty of a reading, in absorbance. [0.0005]")] = None,
-    noise_transmittance: Annotated[float | None, typer.Option(help="... of transmittance, as a fraction. [0.0001]")] = None,
-    noise_wavelength_nm: Annotated[float | None, typer.Option(help="... of the wavelength axis, in nm. [0.05]")] = None,
+    noise_floor: Annotated[
+        float | None, typer.Option(help="Standard uncertainty of a reading, in absorbance (default 0.0005).")
+    ] = None,
+    noise_transmittance: Annotated[float | None, typer.Option(help="... of transmittance, as a fraction (default 0.0001).")] = None,
+    noise_wavelength_nm: Annotated[float | None, typer.Option(help="... of the wavelength axis, in nm (default 0.05).")] = None,
     coverage: Annotated[float, typer.Option(help="Coverage probability of the interval.")] = 0.95,
     target_relative_u: Annotated[
         float | None, typer.Option(help="Relative standard uncertainty wanted; flags what misses it.")
     ] = None,
-    path_length_cm: Annotated[float | None, typer.Option(help="Path length of the cell for every spectrum, in cm. [1]")] = None,
-    path_length_u_cm: Annotated[float | None, typer.Option(help="Its standard uncertainty, in cm. [0: taken as exact]")] = None,
-    dilution_factor: Annotated[float | None, typer.Option(help="Final volume over taken volume, for every spectrum. [1]")] = None,
-    dilution_factor_u: Annotated[float | None, typer.Option(help="Its standard uncertainty. [0: taken as exact]")] = None,
+    path_length_cm: Annotated[
+        float | None, typer.Option(help="Path length of the cell for every spectrum, in cm (default 1).")
+    ] = None,
+    path_length_u_cm: Annotated[
+        float | None, typer.Option(help="Its standard uncertainty, in cm (default 0: taken as exact).")
+    ] = None,
+    dilution_factor: Annotated[
+        float | None, typer.Option(help="Final volume over taken volume, for every spectrum (default 1).")
+    ] = None,
+    dilution_factor_u: Annotated[float | None, typer.Option(help="Its standard uncertainty (default 0: taken as exact).")] = None,
     samples: Annotated[Path | None, typer.Option(help="Bench sheet: id and cell and dilution of each sample.")] = None,
     blank: Annotated[
         str | None, typer.Option(help="File of one blank spectrum on the same axis, taken from every spectrum.")
@@ -68,10 +78,12 @@ def resolve(
     temperature_c: Annotated[float | None, typer.Option(help="Temperature of the samples, in degrees C.")] = None,
     bandwidth_nm: Annotated[float | None, typer.Option(help="Spectral bandwidth of the instrument, in nm.")] = None,
     delimiter: Annotated[
-        str | None, typer.Option(help="Between the fields of the files: comma, semicolon, tab. [found out]")
+        str | None, typer.Option(help="Between the fields of the files: comma, semicolon, tab (default: found out).")
     ] = None,
-    decimal: Annotated[str | None, typer.Option(help="Decimal mark of the files: point, comma. [found out]")] = None,
-    layout: Annotated[str | None, typer.Option(help="Layout of the files: two-columns, columns, rows. [found out]")] = None,
+    decimal: Annotated[str | None, typer.Option(help="Decimal mark of the files: point, comma (default: found out).")] = None,
+    layout: Annotated[
+        str | None, typer.Option(help="Layout of the files: two-columns, columns, rows (default: found out).")
+    ] = None,
     output_format: Annotated[Format, typer.Option("--format", "-f", help="Form of the result.")] = Format.TABLE,
     output: Annotated[Path | None, typer.Option("--output", "-o", help="Write to this file, whole or not at all.")] = None,
     request: Annotated[bool, typer.Option("--request", help="Print the equivalent JSON request and stop.")] = False,
