@@ -183,7 +183,7 @@ def methylene_blue(reference: Path) -> Entry:
                 "S. Prahl, table of methylene blue in water at 10 umol/L (apparent value, partly dimerised)",
                 False,
             ),
-            (664.0, round(at_664, 1), 1.0, "this series, slope at 664 nm: guards the transcription", False),
+            (664.0, round(at_664, 1), 1.0, "this series, slope at 664 nm: guards against copying errors", False),
         ]
     )
     return Entry("methylene-blue", toml, [["wavelength_nm", "molar_absorptivity", "absorptivity_u"], *body])
@@ -222,7 +222,7 @@ def haemoglobin(reference: Path, name: str, title: str, file: str, published: li
         },
     )
     checks = [(w, v, round(0.12 * v, 1), source, False) for w, v, source in published]
-    own = "isosbestic point computed from the same table: guards the transcription, not an independent value"
+    own = "isosbestic point computed from the same table: guards against copying errors, not an independent value"
     checks += [(w, v, round(0.01 * v, 1), own, False) for w, v in ISOSBESTIC]
     return Entry(name, toml + points(checks), [["wavelength_nm", "molar_absorptivity"], *rows[1:]])
 
@@ -261,7 +261,7 @@ def aromatic(reference: Path, name: str) -> Entry:
             "changed": "nothing",
         },
     )
-    guard = "highest value of the source table: guards the transcription, not an independent value"
+    guard = "highest value of the source table: guards against copying errors, not an independent value"
     checks = points([(float(top[0]), value, round(0.001 * value, 2), guard, False)])
     return Entry(name, toml + checks, [["wavelength_nm", "molar_absorptivity"], *rows])
 
