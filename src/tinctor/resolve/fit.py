@@ -173,47 +173,28 @@ def _fit_chunk(
     reading_u: FloatArray | None,
     work: _Work,
 ) -> FitBlock:
-    design = columns.design
-    r, k = columns.r, columns.k
-    residual, variance, shape_variance, weight, D, product = work.of(len(A))
+    design, r = columns.design, columns.r
+    arrays = work.of(len(A))
+    residual, variance, shape_variance, weight, D, product = arrays
     y, smallest_pivot = _first_estimate(columns, A, keep)
-    shift = np.zeros(len(A))
     for _ in range(SHIFT_ROUNDS if design.shift else 1):
-        s = y @ design.Rinv[: design.p].T
-        fitted = np.matmul(y, design.Q.T, out=residual)
-        _reading_variance(fitted, noise, reading_u, variance)
-        np.subtract(A, fitted, out=residual)
-        np.matmul(s, design.slope.T, out=D)
-        if columns.has_shape_u:
-            np.matmul(s**2, design.shape_variance.T, out=shape_variance)
-        _weights(columns, variance, shape_variance, D, noise.wavelength_nm, product, weight)
-        if keep is not None:
-            weight *= keep
-        sums = weight @ columns.weighted
-        right = np.empty((len(A), k))
-        np.multiply(weight, residual, out=product)
-        np.matmul(product, design.Q, out=right[:, :r])
-        if design.shift:
-            right[:, r] = np.vecdot(product, D)
+        s, sums, right = _weighted_sums(columns, A, y, noise, keep, reading_u, arrays)
         gram = _effective(columns, sums, s)
-        factor = Cholesky(gram, k)
+        factor = Cholesky(gram, columns.k)
         step = factor.solve(right)
         y = y + step[:, :r]
-        if design.shift:
-            shift = step[:, r]
     residual -= np.matmul(step[:, :r], design.Q.T, out=product)
     if design.shift:
-        residual -= np.multiply(shift[:, None], D, out=product)
+        residual -= np.multiply(step[:, r:], D, out=product)
     if keep is not None:
         residual *= keep
-    coordinates = np.column_stack([y, shift]) if design.shift else y
     points = np.full(len(A), float(A.shape[1])) if keep is None else keep.sum(axis=1)
     np.multiply(weight, residual, out=product)
     chi_square = np.vecdot(product, residual)
     optimality = _optimality(columns, product, D, gram, chi_square)
     noise_gram, shape_gram = _spread_grams(columns, s, weight, variance, shape_variance)
     return FitBlock(
-        coordinates=coordinates,
+        coordinates=np.column_stack([y, step[:, r:]]),
         gram=gram,
         noise_gram=noise_gram,
         shape_gram=shape_gram,
@@ -228,6 +209,39 @@ def _fit_chunk(
         smallest_pivot=np.minimum(smallest_pivot, factor.smallest_pivot),
         optimality=optimality,
     )
+
+
+def _weighted_sums(
+    columns: FitColumns,
+    A: FloatArray,
+    y: FloatArray,
+    noise: NoiseModel,
+    keep: FloatArray | None,
+    reading_u: FloatArray | None,
+    arrays: FloatArray,
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Weights at the absorbance fitted with `y`, the weighted sums of the column products, and the right-hand sides.
+
+    Writes residual, variances, weight and slope of each reading into `arrays`.
+    """
+    design, r = columns.design, columns.r
+    residual, variance, shape_variance, weight, D, product = arrays
+    s = y @ design.Rinv[: design.p].T
+    fitted = np.matmul(y, design.Q.T, out=residual)
+    _reading_variance(fitted, noise, reading_u, variance)
+    np.subtract(A, fitted, out=residual)
+    np.matmul(s, design.slope.T, out=D)
+    if columns.has_shape_u:
+        np.matmul(s**2, design.shape_variance.T, out=shape_variance)
+    _weights(columns, variance, shape_variance, D, noise.wavelength_nm, product, weight)
+    if keep is not None:
+        weight *= keep
+    right = np.empty((len(A), columns.k))
+    np.multiply(weight, residual, out=product)
+    np.matmul(product, design.Q, out=right[:, :r])
+    if design.shift:
+        right[:, r] = np.vecdot(product, D)
+    return s, weight @ columns.weighted, right
 
 
 def _weights(
