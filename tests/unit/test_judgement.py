@@ -226,3 +226,52 @@ def test_a_blank_with_every_background_term_is_not_a_crash() -> None:
 def test_everything_saturated_is_refused() -> None:
     result = resolved(np.full(W.size, 3.5))
     assert result.spectrum_status().tolist() == [Status.REFUSED]
+
+
+def test_the_stated_change_per_nm_is_what_a_shift_does() -> None:
+    A = np.asarray(0.02 * YELLOW.absorptivity + 0.015 * RED.absorptivity + 0.018 * BLUE.absorptivity)
+    slope = np.gradient(A, W)
+    still, moved = resolved(A), resolved(A + 0.01 * slope)
+    change = (moved.unconstrained[0] / still.unconstrained[0] - 1) / 0.01
+    assert still.relative_per_nm[0] == pytest.approx(change, rel=0.02, abs=1e-5)
+    assert np.abs(still.relative_per_nm[0]).max() > 1e-3
+
+
+def test_correlated_and_large_residuals_raise_the_uncertainty() -> None:
+    rng = np.random.default_rng(3)
+    A = np.asarray(0.02 * YELLOW.absorptivity + 0.015 * RED.absorptivity + 0.018 * BLUE.absorptivity)
+    white = 0.0005 * rng.standard_normal(W.size)
+    smooth = np.convolve(rng.standard_normal(W.size + 20), np.ones(21), mode="valid")
+    smooth *= 0.0005 / smooth.std()
+    as_declared, correlated, larger = resolved(A + white), resolved(A + smooth), resolved(A + 4 * white)
+    assert correlated.effective_points[0] < 0.4 * correlated.points[0]
+    assert as_declared.effective_points[0] > 0.7 * as_declared.points[0]
+    assert correlated.budget[0, 0, 0] > 1.4 * as_declared.budget[0, 0, 0]
+    assert larger.budget[0, 0, 0] > 2.0 * as_declared.budget[0, 0, 0]
+
+
+def test_uncertainties_of_path_and_dilution_are_common_to_the_components() -> None:
+    A = mixture(0.02, 0.015, 0.018)
+    batch = SpectrumBatch(["a"], W, A[None], path_length_cm=0.5, path_length_u_cm=0.01, dilution_factor=10, dilution_factor_u=0.1)
+    result = resolve(batch, TRIO)
+    c = result.unconstrained[0]
+    assert c == pytest.approx(np.array([0.02, 0.015, 0.018]) * 20, rel=0.01)
+    assert result.budget[0, :, 3] == pytest.approx(0.02 * c, rel=1e-9)
+    assert result.budget[0, :, 4] == pytest.approx(0.01 * c, rel=1e-9)
+    plain = resolve(SpectrumBatch(["a"], W, A[None], path_length_cm=0.5, dilution_factor=10), TRIO)
+    common = result.covariance[0] - plain.covariance[0]
+    assert common == pytest.approx(np.outer(c, c) * (0.02**2 + 0.01**2), rel=1e-6)
+
+
+def test_stated_reading_uncertainties_replace_the_noise_model() -> None:
+    A = mixture(0.02, 0.015, 0.018)
+    one = resolve(SpectrumBatch(["a"], W, A[None], absorbance_u=np.full((1, W.size), 0.004)), TRIO)
+    two = resolve(SpectrumBatch(["a"], W, A[None], absorbance_u=np.full((1, W.size), 0.002)), TRIO)
+    assert one.budget[0, :, 0] == pytest.approx(2 * two.budget[0, :, 0], rel=0.05)
+    ignored = A.copy()
+    ignored[:40] += 0.3
+    u = np.full((1, W.size), 0.0005)
+    u[0, :40] = 10.0
+    assert resolve(SpectrumBatch(["a"], W, ignored[None], absorbance_u=u), TRIO).unconstrained[0, 2] == pytest.approx(
+        0.018, rel=0.02
+    )
