@@ -275,3 +275,32 @@ def test_stated_reading_uncertainties_replace_the_noise_model() -> None:
     assert resolve(SpectrumBatch(["a"], W, ignored[None], absorbance_u=u), TRIO).unconstrained[0, 2] == pytest.approx(
         0.018, rel=0.02
     )
+
+
+def test_the_decision_limit_leaves_out_what_the_component_itself_brings() -> None:
+    """It asks what would be seen were the component absent: its own share of a shift of the axis is then not there."""
+    from tinctor.noise import NoiseModel
+
+    cut = Component("cut", W, band(405, 80, 30.0), basis="mass", scale_relative_u=0.01)  # at the end of the axis: a shift shows
+    A = 0.02 * cut.absorptivity + 0.0004 * np.random.default_rng(1).standard_normal(W.size)
+    result = resolved(A, [cut], noise=NoiseModel(wavelength_nm=0.5))
+    noise_u, wavelength_u = result.budget[0, 0, 0], result.budget[0, 0, 5]
+    assert wavelength_u > 3 * noise_u
+    assert result.decision_limit[0, 0] == pytest.approx(1.6449 * noise_u, rel=0.02)
+
+
+def test_each_test_for_an_unmodelled_absorber_speaks_alone() -> None:
+    """Smooth and below the declared noise: structure alone. Large and rough: chi-square alone."""
+    from tinctor.noise import NoiseModel
+
+    rough = NoiseModel(floor=0.02)
+    rng = np.random.default_rng(5)
+    A = np.asarray(0.02 * YELLOW.absorptivity + 0.018 * BLUE.absorptivity)
+    smooth = resolved(A + 0.012 * np.cos((W - 400) / 18), [YELLOW, BLUE], noise=rough)
+    assert smooth.chi_square[0] < smooth.chi_square_limit[0]
+    assert smooth.structure[0] > smooth.structure_limit[0]
+    assert grade(smooth, "unmodelled-absorber") is not Severity.NONE
+    jagged = resolved(A + 0.02 * rng.standard_normal(W.size), [YELLOW, BLUE])
+    assert jagged.chi_square[0] > jagged.chi_square_limit[0]
+    assert jagged.structure[0] < jagged.structure_limit[0]
+    assert grade(jagged, "unmodelled-absorber") is not Severity.NONE

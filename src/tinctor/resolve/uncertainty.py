@@ -71,7 +71,8 @@ class Estimates:
     budget : array (n, p, 6)
         Standard uncertainties by source, in the order of `SOURCES`.
     u_at_zero : array (n, p)
-        Standard uncertainty each would have at zero concentration, the others as they are.
+        Standard uncertainty each would have at zero concentration, the others as they are; with the weights of this fit, so that
+        for a component far above its limit it is on the large side.
     proportional : array (n, p)
         Relative standard uncertainty of the sources that grow with the concentration.
     relative_per_nm : array (n, p)
