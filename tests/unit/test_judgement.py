@@ -304,3 +304,16 @@ def test_each_test_for_an_unmodelled_absorber_speaks_alone() -> None:
     assert jagged.chi_square[0] > jagged.chi_square_limit[0]
     assert jagged.structure[0] < jagged.structure_limit[0]
     assert grade(jagged, "unmodelled-absorber") is not Severity.NONE
+
+
+def test_a_finer_axis_brings_no_more_knowledge_of_the_library() -> None:
+    """Errors of a record tabulated every 4 nm are shared by the readings between: reading every 1 nm does not average them out."""
+    coarse, fine = np.arange(400.0, 701.0, 4.0), np.arange(400.0, 701.0, 1.0)
+
+    def shape_u(axis: np.ndarray) -> float:
+        e = 30 * np.exp(-0.5 * ((coarse - 520) / 40) ** 2)
+        dye = Component("dye", coarse, e, basis="mass", absorptivity_u=np.full(coarse.size, 0.3), scale_relative_u=0.01)
+        A = 0.02 * 30 * np.exp(-0.5 * ((axis - 520) / 40) ** 2)
+        return float(resolve(SpectrumBatch(["a"], axis, A[None]), [dye]).budget[0, 0, 2])
+
+    assert shape_u(fine) == pytest.approx(shape_u(coarse), rel=0.15)
