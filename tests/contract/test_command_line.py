@@ -204,6 +204,10 @@ def test_output_is_written_whole_or_not_at_all(tmp_path: Path) -> None:
     done = tinctor(*RUN, "--format", "csv", "--output", str(target))
     assert (done.returncode, done.stdout) == (0, "")
     assert target.read_text(encoding="utf-8").startswith("id,component")
+    plain = tmp_path / "plain"
+    plain.touch()
+    assert target.stat().st_mode == plain.stat().st_mode
+    plain.unlink()
     before = target.read_bytes()
     failed = tinctor(*RUN, "--unit", "ppm", "--output", str(target))
     assert failed.returncode == 3

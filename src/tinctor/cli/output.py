@@ -35,7 +35,14 @@ def put(text: str, output: Path | None) -> None:
     try:
         with os.fdopen(handle, "w", encoding="utf-8", newline="") as file:
             file.write(text)
+        Path(name).chmod(0o666 & ~_umask())  # a temporary file is made for its owner alone
         Path(name).replace(output)
     except BaseException:
         Path(name).unlink(missing_ok=True)
         raise
+
+
+def _umask() -> int:
+    mask = os.umask(0)
+    os.umask(mask)
+    return mask
