@@ -19,10 +19,14 @@ __all__ = ["CheckFinding", "cas_is_valid", "check_collection", "formula_mass"]
 
 #: IUPAC abridged standard atomic weights 2021 (Prohaska et al., Pure Appl. Chem. 94 (2022) 573), from memory.
 ATOMIC_WEIGHTS: Final = {
-    "H": 1.008, "C": 12.011, "N": 14.007, "O": 15.999, "F": 18.998, "Na": 22.990, "Mg": 24.305, "P": 30.974, "S": 32.06,
-    "Cl": 35.45, "K": 39.098, "Ca": 40.078, "Cr": 51.996, "Mn": 54.938, "Fe": 55.845, "Co": 58.933, "Ni": 58.693,
-    "Cu": 63.546, "Zn": 65.38, "Br": 79.904, "I": 126.90,
+    "H": 1.008, "Li": 6.94, "B": 10.81, "C": 12.011, "N": 14.007, "O": 15.999, "F": 18.998, "Na": 22.990, "Mg": 24.305,
+    "Al": 26.982, "Si": 28.085, "P": 30.974, "S": 32.06, "Cl": 35.45, "K": 39.098, "Ca": 40.078, "Ti": 47.867, "V": 50.942,
+    "Cr": 51.996, "Mn": 54.938, "Fe": 55.845, "Co": 58.933, "Ni": 58.693, "Cu": 63.546, "Zn": 65.38, "Br": 79.904,
+    "Ag": 107.87, "Sn": 118.71, "I": 126.90, "Ba": 137.33,
 }  # fmt: skip
+
+#: No dye comes near (L g-1 cm-1): the strongest have some 300 to 800, so that more is a molar value under the wrong heading.
+HIGHEST_MASS_ABSORPTIVITY: Final = 2000.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -43,7 +47,7 @@ def check_collection(folder: str | Path) -> list[CheckFinding]:
     >>> check_collection(load_collection("published").folder)
     []
     """
-    collection = Collection(Path(folder))
+    collection = Collection(Path(folder).resolve())
     findings = list(_stray_files(collection))
     loaded: list[Record] = []
     for name in collection.records:
@@ -72,26 +76,34 @@ def cas_is_valid(cas: str) -> bool:
 
 
 def formula_mass(formula: str) -> float | None:
-    """Return the molar mass in g/mol of a plain formula such as C16H18ClN3S, or `None` when it is not one.
+    """Return the molar mass in g/mol of a formula without brackets or charges, or `None` when it is not one.
+
+    A point sets off water of crystallisation and the like: C16H18ClN3S.3H2O.
 
     Examples
     --------
-    >>> round(formula_mass("C16H18ClN3S"), 2)
-    319.85
+    >>> round(formula_mass("C16H18ClN3S"), 2), round(formula_mass("C16H18ClN3S.3H2O"), 2)
+    (319.85, 373.9)
     """
-    parts = re.findall(r"([A-Z][a-z]?)(\d*)", formula)
-    if "".join(symbol + count for symbol, count in parts) != formula or any(symbol not in ATOMIC_WEIGHTS for symbol, _ in parts):
-        return None
-    return sum(ATOMIC_WEIGHTS[symbol] * int(count or 1) for symbol, count in parts)
+    total = 0.0
+    for part in re.split("[.·]", formula):
+        found = re.fullmatch(r"(\d*)((?:[A-Z][a-z]?\d*)+)", part)
+        atoms = re.findall(r"([A-Z][a-z]?)(\d*)", found[2]) if found else []
+        if found is None or any(symbol not in ATOMIC_WEIGHTS for symbol, _ in atoms):
+            return None
+        total += int(found[1] or 1) * sum(ATOMIC_WEIGHTS[symbol] * int(count or 1) for symbol, count in atoms)
+    return total
 
 
 def _names_and_numbers(record: Record) -> Iterator[tuple[str, str]]:
     file = record.file
     if file.cas and not cas_is_valid(file.cas):
         yield "cas", f"the check digit of CAS {file.cas} does not agree"
-    if file.molar_mass_g_per_mol and file.formula:
+    if file.formula:
         mass = formula_mass(file.formula)
-        if mass is not None and abs(mass - file.molar_mass_g_per_mol) > 0.002 * mass:
+        if mass is None:
+            yield "formula", f"{file.formula!r} cannot be read: symbols and counts without brackets or charges, as C16H18ClN3S.3H2O"
+        elif file.molar_mass_g_per_mol and abs(mass - file.molar_mass_g_per_mol) > 0.002 * mass:
             yield "molar-mass", f"{file.formula} weighs {mass:.2f} g/mol, the record says {file.molar_mass_g_per_mol:g}"
 
 
@@ -134,6 +146,8 @@ def _spectrum(record: Record) -> Iterator[tuple[str, str]]:
         yield "negative", f"absorptivity {lowest:.4g} is further below zero than noise"
     if component.wavelength_nm.size < 5:
         yield "grid", f"only {component.wavelength_nm.size} wavelengths"
+    if component.basis == "mass" and highest > HIGHEST_MASS_ABSORPTIVITY:
+        yield "basis", f"no substance absorbs {highest:.4g} L g-1 cm-1: are the values molar?"
 
 
 CHECKS: Final[tuple[Callable[[Record], Iterator[tuple[str, str]]], ...]] = (
@@ -168,7 +182,7 @@ def _duplicates(records: list[Record]) -> Iterator[CheckFinding]:
         file = record.file
         if file.cas is None:
             continue
-        key = (file.cas, file.conditions, file.source.citation, file.title)
+        key = (file.cas, file.conditions, file.source.citation)
         if key in seen:
             yield CheckFinding(record.name, "duplicate", f"same substance, conditions and source as {seen[key]!r}")
         seen.setdefault(key, record.name)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import tomllib
 from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Final
 
@@ -17,6 +18,8 @@ __all__ = ["COLLECTION_FILE", "Collection", "collections", "load_collection"]
 
 #: Each collection's own description.
 COLLECTION_FILE: Final = "collection.toml"
+#: Its keys that hold text, all of them needed.
+COLLECTION_TEXTS: Final = ("schema", "name", "title", "description")
 #: Folders of collections of the user's own, in the manner of PATH.
 LIBRARY_VARIABLE: Final = "TINCTOR_LIBRARY"
 
@@ -36,6 +39,9 @@ class _Records(Mapping[str, Record]):
             self._loaded[name] = load_record(self._folder / f"{name}.toml", self._collection)
         return self._loaded[name]
 
+    def __contains__(self, name: object) -> bool:
+        return name in self._names  # without reading the record
+
     def __iter__(self) -> Iterator[str]:
         return iter(self._names)
 
@@ -43,8 +49,14 @@ class _Records(Mapping[str, Record]):
         return len(self._names)
 
 
+@dataclass(frozen=True, slots=True, eq=False, init=False)
 class Collection:
     """A folder of records.
+
+    Parameters
+    ----------
+    folder
+        Where it is; it holds a collection.toml.
 
     Attributes
     ----------
@@ -55,17 +67,32 @@ class Collection:
     folder
         Where it is.
     records
-        Mapping of record name to `Record`, in order of name.
+        Mapping of record name to `Record`, in order of name; a record is read when it is first asked for.
+
+    Raises
+    ------
+    UnreadableFileError
+        When collection.toml is missing or is not what the format says.
     """
 
+    name: str
+    title: str
+    description: str
+    invented: bool
+    folder: Path
+    records: Mapping[str, Record]
+
     def __init__(self, folder: Path) -> None:
-        self.folder = folder
-        self.name = folder.name
         document = _collection_file(folder)
-        self.title = str(document["title"])
-        self.description = str(document["description"])
-        self.invented = bool(document.get("invented", False))
-        self.records: Mapping[str, Record] = _Records(folder, self.name)
+        for key, value in (
+            ("name", folder.name),
+            ("title", document["title"]),
+            ("description", document["description"]),
+            ("invented", document.get("invented", False)),
+            ("folder", folder),
+            ("records", _Records(folder, folder.name)),
+        ):
+            object.__setattr__(self, key, value)
 
     def component(self, name: str) -> Component:
         """Return a component by name.
@@ -98,12 +125,16 @@ def collections() -> list[str]:
 def load_collection(name: str | Path) -> Collection:
     """Return a collection by name, or by the path of its folder.
 
-    Looked for in the folders that the environment variable TINCTOR_LIBRARY lists, and in the library shipped.
+    Parameters
+    ----------
+    name
+        A path, or text with a separator in it, is the folder. A bare name is looked for in the current folder, in the
+        folders that the environment variable TINCTOR_LIBRARY lists, and in the library shipped.
 
     Raises
     ------
     InputError
-        When there is none, or two of the same name.
+        When there is none, or two of the same name: which one is meant is never settled by an order of places.
 
     Examples
     --------
@@ -111,26 +142,30 @@ def load_collection(name: str | Path) -> Collection:
     'molar'
     """
     text = str(name)
-    if os.sep in text or "/" in text or text.startswith("."):
+    if isinstance(name, Path) or os.sep in text or "/" in text or text.startswith("."):
         folder = Path(text)
         if not (folder / COLLECTION_FILE).is_file():
             raise InputError.single("unknown-collection", ".library", f"{text} is not a collection: it has no {COLLECTION_FILE}")
         return Collection(folder.resolve())
-    found = [folder for folder in _folders() if folder.name == text]
+    here = [Path(text).resolve()] if text and (Path(text) / COLLECTION_FILE).is_file() else []
+    found = list(dict.fromkeys([*here, *(folder for folder in _folders() if folder.name == text)]))
     if not found:
-        names = collections()
-        raise InputError.single(
-            "unknown-collection",
-            ".library",
-            f"there is no collection {text!r}",
-            f"there are {quoted(names)}; or give the path of a folder",
-        )
+        raise _unknown_collection(text)
     if len(found) > 1:
         places = " and ".join(str(folder) for folder in found)
         raise InputError.single(
             "two-collections", ".library", f"two collections are called {text!r}: {places}", "rename one, or give a path"
         )
     return Collection(found[0])
+
+
+def _unknown_collection(text: str) -> InputError:
+    names = collections()
+    there_are = f"there are {quoted(names)}; or give the path of a folder" if names else "there are none; give the path of a folder"
+    what = f"there is no collection {text!r}"
+    if text and Path(text).is_dir():
+        what += f": the folder of that name here has no {COLLECTION_FILE}"
+    return InputError.single("unknown-collection", ".library", what, there_are)
 
 
 def _folders() -> Iterator[Path]:
@@ -146,9 +181,17 @@ def _places() -> list[Path]:
             raise InputError.single(
                 "no-folder", LIBRARY_VARIABLE, f"{place} is not a folder", f"mend the variable {LIBRARY_VARIABLE}"
             )
+        if (place / COLLECTION_FILE).is_file():
+            raise InputError.single(
+                "collection-as-place",
+                LIBRARY_VARIABLE,
+                f"expected folders that hold collections, found the collection {place} itself",
+                f"name the folder above it: {place.resolve().parent}",
+            )
     package = Path(__file__).resolve().parents[1]
     shipped = [place for place in (package / "spectra_library", package.parents[1] / "spectra_library") if place.is_dir()][:1]
-    return own + shipped
+    # the same folder named twice is one place, not two collections of a name
+    return list(dict.fromkeys(place.resolve() for place in own + shipped))
 
 
 def _collection_file(folder: Path) -> dict[str, object]:
@@ -157,11 +200,16 @@ def _collection_file(folder: Path) -> dict[str, object]:
         document = tomllib.loads((folder / COLLECTION_FILE).read_text(encoding="utf-8"))
     except (OSError, tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         raise UnreadableFileError.single("not-toml", source, f"the file cannot be read: {error}") from error
-    known = {"schema", "name", "title", "description", "invented"}
-    if document.get("schema") != "collection/1" or not {"name", "title", "description"} <= set(document) <= known:
+    if document.get("schema") != "collection/1" or not {*COLLECTION_TEXTS} <= set(document) <= {*COLLECTION_TEXTS, "invented"}:
         raise UnreadableFileError.single(
-            "collection-keys", source, f'expected schema = "collection/1", name, title, description; found {", ".join(document)}'
+            "collection-keys",
+            source,
+            f'expected schema = "collection/1", name, title, description and perhaps invented; found {", ".join(document)}',
         )
+    for key, value in document.items():
+        if type(value) is not (bool if key == "invented" else str):
+            expected = "true or false" if key == "invented" else "text"
+            raise UnreadableFileError.single("collection-keys", f"{source}, {key}", f"expected {expected}, found {value!r}")
     if document["name"] != folder.name:
         raise UnreadableFileError.single(
             "collection-name", source, f"the folder is {folder.name!r} and the name {document['name']!r}"

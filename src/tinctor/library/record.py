@@ -12,6 +12,7 @@ import numpy as np
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from tinctor.arrays import FloatArray
+from tinctor.axis import wavelength_axis
 from tinctor.component import Component, Conditions
 from tinctor.errors import Fault, InputError, UnreadableFileError
 from tinctor.files.numbers import first_wrong, numbers
@@ -24,9 +25,7 @@ NAME = r"^[a-z0-9]+(-[a-z0-9]+)*$"
 
 
 class _Part(BaseModel):
-    model_config = ConfigDict(
-        strict=True, extra="forbid", allow_inf_nan=False, frozen=True, populate_by_name=True, defer_build=True
-    )
+    model_config = ConfigDict(strict=True, extra="forbid", allow_inf_nan=False, frozen=True, defer_build=True)
 
 
 class ConditionsPart(_Part):
@@ -62,7 +61,7 @@ class CheckPoint(_Part):
 
     wavelength_nm: float
     value: float
-    tolerance: float
+    tolerance: float = Field(gt=0)
     source: str
     from_memory: bool = False
 
@@ -72,7 +71,7 @@ class RecordFile(_Part):
 
     schema_: Literal["record/1"] = Field(alias="schema")
     name: str = Field(pattern=NAME)
-    title: str
+    title: str = Field(min_length=1)
     basis: Basis
     scale_relative_u: float
     scale_relative_u_reason: str
@@ -115,6 +114,16 @@ class Record:
         return self.file.name
 
     @property
+    def title(self) -> str:
+        """What it is, in words."""
+        return self.file.title
+
+    @property
+    def metadata(self) -> RecordFile:
+        """The same as `file`: everything known about the substance but its spectrum."""
+        return self.file
+
+    @property
     def reference(self) -> str:
         """Collection and name: "published/methylene-blue"."""
         return f"{self.collection}/{self.file.name}"
@@ -135,9 +144,15 @@ def load_record(toml_path: Path, collection: str) -> Record:
     try:
         component = _component(file, axis, absorptivity, spread)
     except InputError as error:
-        raise UnreadableFileError([Fault(f.code, f"{toml_path.stem}{f.path}", f.message, f.hint) for f in error.faults]) from error
+        raise UnreadableFileError([_placed(fault, toml_path.name, csv_path.name) for fault in error.faults]) from error
     digest = hashlib.sha256(toml_bytes + b"\0" + csv_bytes).hexdigest()
     return Record(collection, file, component, digest)
+
+
+def _placed(fault: Fault, toml_name: str, csv_name: str) -> Fault:
+    """Name the file that a fault of the component lies in: the spectrum is in the CSV, the rest in the TOML."""
+    of_spectrum = fault.path.startswith((".wavelength_nm", ".absorptivity"))
+    return Fault(fault.code, f"{csv_name if of_spectrum else toml_name}, {fault.path.removeprefix('.')}", fault.message, fault.hint)
 
 
 def _bytes(path: Path) -> bytes:
@@ -169,11 +184,13 @@ def _read_csv(data: bytes, source: str, basis: Basis) -> tuple[FloatArray, Float
         raise UnreadableFileError.single(
             "record-header", f"{source}, line 1", f"expected {','.join(header)} and perhaps absorptivity_u, found {found}"
         )
+    if len(cells.rows) == 1:
+        raise UnreadableFileError.single("empty-record", source, "expected one line for each wavelength, found only the header")
     for row, line in zip(cells.rows[1:], cells.lines[1:], strict=True):
         wrong = first_wrong(row, "point")
         if len(row) != len(cells.rows[0]) or wrong is not None:
             raise UnreadableFileError.single(
-                "not-a-number", f"{source}, line {line}", f"expected {len(header)} numbers, found {row}"
+                "not-a-number", f"{source}, line {line}", f"expected {len(cells.rows[0])} numbers, found {row}"
             )
     values = np.stack([numbers(row, "point") for row in cells.rows[1:]], axis=1)
     return values[0], values[1], values[2] if len(values) > 2 else None
@@ -183,7 +200,7 @@ def _component(file: RecordFile, axis: FloatArray, absorptivity: FloatArray, spr
     c = file.conditions
     return Component(
         file.name,
-        axis,
+        wavelength_axis(axis),  # a component turns a descending axis round; a record's file must ascend as it stands
         absorptivity,
         basis=file.basis,
         absorptivity_u=spread,
