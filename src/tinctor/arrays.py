@@ -33,6 +33,9 @@ def finite_array(values: ArrayLike, name: str, *, ndim: int, unit: str = "") -> 
     """
     try:
         array = read_only(values)
+    except OverflowError as error:  # a whole number beyond float64
+        message = f"{name} must be finite numbers, found one too large for any reading"
+        raise InputError.single("not-finite", f".{name}", message, "numbers beyond 1e308 are refused") from error
     except (TypeError, ValueError) as error:
         raise InputError.single("not-numeric", f".{name}", f"{name} must be numbers, found something else: {error}") from error
     if array.ndim != ndim:

@@ -93,6 +93,8 @@ def test_per_cent_transmittance_is_recognised() -> None:
 def test_readings_that_are_not_finite_are_named() -> None:
     faults = faults_of(lambda: Spectrum("a", W, [0.1, np.nan, np.inf]))
     assert [fault.path for fault in faults] == [".absorbance[1]", ".absorbance[2]"]
+    (too_large,) = faults_of(lambda: Spectrum("a", W, [10**400, 0.1, 0.2]))
+    assert (too_large.code, too_large.path) == ("not-finite", ".absorbance")
 
 
 def test_batches_share_an_axis_and_have_ids_of_their_own() -> None:

@@ -12,16 +12,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tinctor.errors import Fault, UnreadableFileError
-from tinctor.files.layouts import spectra_by_layout
+from tinctor.errors import UnreadableFileError
+from tinctor.files.grid import Grid
+from tinctor.files.layouts import LaidOut, laid_out
+from tinctor.files.misfit import Misfit, Stage, nearest
 from tinctor.files.reading import DELIMITERS, LAYOUTS, FileReading, Layout, ReadOptions
 from tinctor.files.table import Cells, cells_of, decoded
 from tinctor.spectrum import Spectrum
 
 __all__ = ["read_delimited"]
-
-#: Faults that say "this is not the layout" and not "this is what is wrong with it": shown only when there is nothing better.
-SHAPE_FAULTS = frozenset({"layout", "no-header", "ragged"})
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -29,31 +28,32 @@ class _Candidate:
     delimiter: str
     decimal: str
     layout: Layout
-    spectra: list[Spectrum]
+    empty_rows: int
+    found: LaidOut
 
     def __str__(self) -> str:
-        count = len(self.spectra)
-        what = f"{count} spectra" if count > 1 else "1 spectrum"
-        points = self.spectra[0].wavelength_nm.size
+        spectra = self.found.spectra
+        what = f"{len(spectra)} spectra" if len(spectra) > 1 else "1 spectrum"
+        points = spectra[0].wavelength_nm.size
         return f"delimiter {self.delimiter}, decimal {self.decimal}, layout {self.layout} ({what} of {points} points)"
 
 
-def read_delimited(data: bytes, source: str, options: ReadOptions | None = None) -> FileReading:
+def read_delimited(data: bytes, source_name: str, options: ReadOptions | None = None) -> FileReading:
     """Return the spectra of a delimited text.
 
     Parameters
     ----------
     data
         The file's bytes: UTF-8, with or without byte order mark.
-    source
+    source_name
         The file's name, for messages; its stem is the id of a spectrum without a header.
     options
-        What to take as given.
+        What to take as given; everything is found out where it is `None`.
 
     Raises
     ------
     UnreadableFileError
-        When no reading holds (with what is wrong, and where), or when several do.
+        When no reading holds (with what is wrong in the one that most nearly does, and where), or when several do.
 
     Examples
     --------
@@ -61,29 +61,29 @@ def read_delimited(data: bytes, source: str, options: ReadOptions | None = None)
     array([0.213, 0.22 ])
     """
     options = options or ReadOptions()
-    text = decoded(data, source)
+    text = decoded(data, source_name)
     holding: list[_Candidate] = []
-    failed: list[UnreadableFileError] = []
+    misfits: list[Misfit] = []
     for delimiter in [options.delimiter] if options.delimiter else _delimiters(text):
         try:
-            cells = cells_of(text, DELIMITERS[delimiter], source)
+            cells = cells_of(text, DELIMITERS[delimiter], source_name)
         except UnreadableFileError as error:
-            failed.append(error)
+            misfits.append(Misfit.of(Stage.TABLE, *error.faults))
             continue
-        for decimal in _decimals(options, delimiter):
+        for decimal in _decimals(options, delimiter, text):
+            grid = Grid(cells, decimal, source_name, _stem(source_name))
             for layout in _layouts(options, cells):
                 try:
-                    spectra = spectra_by_layout(layout, cells, decimal, source, _stem(source))
-                except UnreadableFileError as error:
-                    failed.append(error)
-                    continue
-                holding.append(_Candidate(delimiter, decimal, layout, spectra))
+                    holding.append(_Candidate(delimiter, decimal, layout, cells.empty_rows, laid_out(layout, grid)))
+                except Misfit as misfit:
+                    misfits.append(misfit)
     if not holding:
-        raise _most_telling(failed)
+        raise nearest(misfits)
     first = holding[0]
-    if any(not _same(first.spectra, other.spectra) for other in holding[1:]):
-        raise _ambiguous(holding, source)
-    return FileReading(source, tuple(first.spectra), first.layout, first.delimiter, first.decimal, notes=_notes(text))
+    if any(not _same(first.found.spectra, other.found.spectra) for other in holding[1:]):
+        raise _ambiguous(holding, source_name)
+    spectra = tuple(first.found.spectra)
+    return FileReading(source_name, spectra, first.layout, first.delimiter, first.decimal, notes=_notes(first, text))
 
 
 def _delimiters(text: str) -> list[str]:
@@ -91,10 +91,12 @@ def _delimiters(text: str) -> list[str]:
     return found or ["comma"]
 
 
-def _decimals(options: ReadOptions, delimiter: str) -> list[str]:
+def _decimals(options: ReadOptions, delimiter: str, text: str) -> list[str]:
+    """The decimal marks worth trying: a comma must occur, and between commas it must be quoted."""
     if options.decimal:
         return [options.decimal]
-    return ["point"] if delimiter == "comma" else ["point", "comma"]
+    comma = '"' in text if delimiter == "comma" else "," in text
+    return ["point", "comma"] if comma else ["point"]
 
 
 def _layouts(options: ReadOptions, cells: Cells) -> list[Layout]:
@@ -103,9 +105,9 @@ def _layouts(options: ReadOptions, cells: Cells) -> list[Layout]:
     return ["two-columns", "rows"] if len(cells.rows[0]) == 2 else ["columns", "rows"]
 
 
-def _stem(source: str) -> str:
-    name = re.split(r"[/\\]", source)[-1]
-    return name.rsplit(".", 1)[0] or name
+def _stem(source_name: str) -> str:
+    name = re.split(r"[/\\]", source_name)[-1]
+    return (name.rsplit(".", 1)[0] or name).strip()
 
 
 def _same(one: list[Spectrum], other: list[Spectrum]) -> bool:
@@ -113,38 +115,31 @@ def _same(one: list[Spectrum], other: list[Spectrum]) -> bool:
         a.id == b.id
         and np.array_equal(a.wavelength_nm, b.wavelength_nm)
         and np.array_equal(a.absorbance, b.absorbance)
-        and (a.path_length_cm, a.dilution_factor) == (b.path_length_cm, b.dilution_factor)
+        and (a.path_length_cm, a.path_length_u_cm, a.dilution_factor, a.dilution_factor_u)
+        == (b.path_length_cm, b.path_length_u_cm, b.dilution_factor, b.dilution_factor_u)
         for a, b in zip(one, other, strict=True)
     )
 
 
-def _ambiguous(holding: list[_Candidate], source: str) -> UnreadableFileError:
-    differing = [
-        f"--{name}" for name in ("delimiter", "decimal", "layout") if len({getattr(candidate, name) for candidate in holding}) > 1
-    ]
+def _ambiguous(holding: list[_Candidate], source_name: str) -> UnreadableFileError:
+    ways = []
+    for name in ("delimiter", "decimal", "layout"):
+        values = list(dict.fromkeys(getattr(candidate, name) for candidate in holding))
+        if len(values) > 1:
+            ways.append(f"{' or '.join(f'{name}={value}' for value in values)} (--{name} on the command line)")
     readings = "; or ".join(str(candidate) for candidate in holding)
     return UnreadableFileError.single(
-        "ambiguous", source, f"the file can be read in {len(holding)} ways: {readings}", f"say which with {' or '.join(differing)}"
+        "ambiguous",
+        source_name,
+        f"the file can be read in {len(holding)} ways: {readings}",
+        f"say which with {', and '.join(ways)}",
     )
 
 
-def _most_telling(failed: list[UnreadableFileError]) -> UnreadableFileError:
-    """The fault of the reading that got furthest: one about a value before one about the shape."""
-
-    def rank(error: UnreadableFileError) -> tuple[bool, int]:
-        fault = error.faults[0]
-        line = re.search(r"line (\d+)", fault.path)
-        return fault.code not in SHAPE_FAULTS, int(line.group(1)) if line else 0
-
-    best = max(failed, key=rank)
-    if best.faults[0].code not in SHAPE_FAULTS:
-        return best
-    shapes = (
-        "two columns (wavelength, absorbance), one spectrum a column under a row of ids, or one a row beside a row of wavelengths"
-    )
-    fault = best.faults[0]
-    return UnreadableFileError([Fault(fault.code, fault.path, f"{fault.message}. A file holds {shapes}", fault.hint)])
-
-
-def _notes(text: str) -> tuple[str, ...]:
-    return ("the minus sign U+2212 was read as a minus",) if "−" in text else ()
+def _notes(candidate: _Candidate, text: str) -> tuple[str, ...]:
+    notes = list(candidate.found.notes)
+    if text.count("−") > sum(spectrum.id.count("−") for spectrum in candidate.found.spectra):
+        notes.append("the minus sign U+2212 was read as a minus")
+    if candidate.empty_rows:
+        notes.append(f"{candidate.empty_rows} row(s) of delimiters without values at the end were left out")
+    return tuple(notes)

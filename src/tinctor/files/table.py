@@ -4,25 +4,33 @@ from __future__ import annotations
 
 import csv
 import io
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Final
 
 from tinctor.errors import UnreadableFileError
+from tinctor.files.source import check_size
 
-__all__ = ["LARGEST_FILE_BYTES", "MOST_FIELDS", "Cells", "cells_of", "decoded"]
+__all__ = ["MOST_FIELDS", "MOST_PER_AXIS", "Cells", "cells_of", "decoded"]
 
-#: Larger files are refused: delimited text of this size holds tens of thousands of spectra.
-LARGEST_FILE_BYTES: Final = 512 * 1024 * 1024
-#: No spectrum has more wavelengths, and no plain export more spectra side by side.
-MOST_FIELDS: Final = 20_000
+#: No spectrum has more wavelengths, and no plain export more spectra.
+MOST_PER_AXIS: Final = 20_000
+#: Beside the readings of a line stand the id or the wavelength and at most four named columns.
+MOST_FIELDS: Final = MOST_PER_AXIS + 5
+
+ENCODINGS: Final = "save it as UTF-8 text, with or without byte order mark; nothing else is read"
 
 
 @dataclass(frozen=True, slots=True)
 class Cells:
-    """The fields of a table, and the line of the file on which each row begins (from 1)."""
+    """The fields of a table, and the line of the file on which each row begins (from 1).
+
+    `empty_rows` counts the rows at the end that hold delimiters and nothing else, and are not among `rows`.
+    """
 
     rows: list[list[str]]
     lines: list[int]
+    empty_rows: int = 0
 
 
 def decoded(data: bytes, source: str) -> str:
@@ -33,25 +41,15 @@ def decoded(data: bytes, source: str) -> str:
     UnreadableFileError
         For an empty or oversized file and for other encodings.
     """
-    if len(data) > LARGEST_FILE_BYTES:
-        raise UnreadableFileError.single(
-            "file-too-large",
-            source,
-            f"the file has {len(data) / 1e6:.0f} MB, more than the {LARGEST_FILE_BYTES // 2**20} MiB that are read",
-        )
-    if data.startswith((b"\xff\xfe", b"\xfe\xff")) or b"\x00" in data[:4096]:
-        raise UnreadableFileError.single(
-            "encoding", source, "expected UTF-8 text, found UTF-16 or binary data", "save it as UTF-8 text"
-        )
+    check_size(data, source)
+    if data.startswith((b"\xff\xfe", b"\xfe\xff")) or b"\x00" in data:
+        raise UnreadableFileError.single("encoding", source, "expected UTF-8 text, found UTF-16 or binary data", ENCODINGS)
     try:
         text = data.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = data.count(b"\n", 0, error.start) + 1
         raise UnreadableFileError.single(
-            "encoding",
-            f"{source}, line {line}",
-            f"expected UTF-8 text, found byte 0x{data[error.start]:02x}",
-            "save it as UTF-8 text",
+            "encoding", f"{source}, line {line}", f"expected UTF-8 text, found byte 0x{data[error.start]:02x}", ENCODINGS
         ) from error
     if not text.strip():
         raise UnreadableFileError.single("empty-file", source, "the file is empty: expected wavelengths and absorbances")
@@ -64,34 +62,53 @@ def cells_of(text: str, delimiter: str, source: str) -> Cells:
     Raises
     ------
     UnreadableFileError
-        For an unclosed quote, a blank line inside, or more fields than any spectrum has.
+        For an unclosed quote, a blank line inside, or more fields or rows than any plain export has.
     """
-    widest = text[: text.find("\n")].count(delimiter) + 1 if "\n" in text else text.count(delimiter) + 1
-    if widest > MOST_FIELDS:
-        raise UnreadableFileError.single(
-            "too-many-columns", f"{source}, line 1", f"found {widest} columns; at most {MOST_FIELDS} are read", "split the file"
-        )
-    reader = csv.reader(io.StringIO(text, newline=""), delimiter=delimiter, quotechar='"', strict=True)
+    reader = csv.reader(_bounded_lines(text, delimiter, source), delimiter=delimiter, quotechar='"', doublequote=True, strict=True)
     rows: list[list[str]] = []
     lines: list[int] = []
-    before = 0
+    blank_line = empty_rows = before = 0
     try:
         for row in reader:
-            rows.append([cell.strip() for cell in row])
-            lines.append(before + 1)
-            before = reader.line_num
+            line, before = before + 1, reader.line_num
+            cells = list(map(str.strip, row))
+            if not any(cells):
+                blank_line = blank_line or line
+                empty_rows += len(cells) > 1
+                continue
+            if blank_line:
+                raise UnreadableFileError.single(
+                    "blank-line", f"{source}, line {blank_line}", "found a blank line inside the table", "remove it"
+                )
+            _check_rows(rows, f"{source}, line {line}")
+            rows.append(cells)
+            lines.append(line)
     except csv.Error as error:
+        place = f"{source}, line {max(reader.line_num, 1)}"
         raise UnreadableFileError.single(
-            "bad-quotes", f"{source}, line {reader.line_num}", f"the fields cannot be read: {error}"
+            "bad-quotes", place, f"the fields cannot be read: {error}", 'close the quote, and double a " inside quotes'
         ) from error
-    while rows and not any(rows[-1]):
-        rows.pop()
-        lines.pop()
     if not rows:
         raise UnreadableFileError.single("empty-file", source, "the file holds no cells: expected wavelengths and absorbances")
-    for row, line in zip(rows, lines, strict=True):
-        if not any(row):
+    return Cells(rows, lines, empty_rows)
+
+
+def _bounded_lines(text: str, delimiter: str, source: str) -> Iterator[str]:
+    """Lines as the csv module wants them; one that is absurdly wide is refused before it is taken apart."""
+    for number, line in enumerate(io.StringIO(text, newline=""), start=1):
+        fields = line.count(delimiter) + 1
+        if fields > MOST_FIELDS:
             raise UnreadableFileError.single(
-                "blank-line", f"{source}, line {line}", "found a blank line inside the table", "remove it"
+                "too-many-columns",
+                f"{source}, line {number}",
+                f"found {fields} columns; at most {MOST_PER_AXIS} wavelengths or spectra are read",
+                "split the file",
             )
-    return Cells(rows, lines)
+        yield line
+
+
+def _check_rows(rows: list[list[str]], place: str) -> None:
+    if len(rows) > MOST_PER_AXIS:
+        raise UnreadableFileError.single(
+            "too-many-rows", place, f"found more rows; at most {MOST_PER_AXIS} wavelengths or spectra are read", "split the file"
+        )

@@ -88,7 +88,10 @@ def error_body(error: TinctorError) -> dict[str, Any]:
 
 def _fault(item: Any) -> Fault:
     path = json_path(item["loc"])
-    known = WORDS.get(item["type"])
+    found = item.get("input")
+    # a whole number beyond float64 is a number, and the schema library says that it is none
+    too_large = item["type"] == "float_type" and isinstance(found, int) and not isinstance(found, bool)
+    known = WORDS.get("finite_number" if too_large else item["type"])
     if known is None:
         return Fault(item["type"].replace("_", "-"), path, item["msg"])
     code, words, hint = known
