@@ -55,7 +55,7 @@ def guarded(*, as_json: bool = False) -> Iterator[None]:
     except (typer.Exit, typer.Abort, typer.BadParameter, KeyboardInterrupt):
         raise
     except Exception as error:
-        if os.environ.get("TINCTOR_DEBUG"):
+        if os.environ.get("TINCTOR_DEBUG") == "1":
             raise
         fail(
             f"tinctor: a fault of the tool itself: {type(error).__name__}: {error}. Please report it; TINCTOR_DEBUG=1 shows where",

@@ -29,7 +29,7 @@ def list_records(
         found = [load_collection(name) for name in ([collection] if collection else collections())]
         if output_format is Format.JSON:
             document = [{"name": c.name, "title": c.title, "invented": c.invented, "records": list(c.records)} for c in found]
-            put(json.dumps({"collections": document}, ensure_ascii=False) + "\n", None)
+            put(json.dumps({"schema": "library-list/1", "collections": document}, ensure_ascii=False) + "\n", None)
         elif output_format is Format.CSV:
             rows = [f"{c.name},{name}" for c in found for name in c.records]
             put("\n".join(["collection,record", *rows]) + "\n", None)

@@ -9,6 +9,7 @@ from typing import Annotated
 import typer
 
 from tinctor.cli import documents, library
+from tinctor.cli.output import speak_utf8
 from tinctor.cli.resolve import EPILOG, resolve
 from tinctor.version import __version__
 
@@ -50,4 +51,5 @@ def _options(
 
 def main() -> None:
     """Run the command line."""
+    speak_utf8()
     app()

@@ -13,6 +13,9 @@ from tinctor.cli.faults import Exit, guarded
 from tinctor.cli.output import Format, put
 
 if TYPE_CHECKING:
+    from collections.abc import Iterable
+
+    from tinctor.files import ReadOptions
     from tinctor.operations.resolve import ResolveResponse
     from tinctor.spectrum import Spectrum
 
@@ -23,8 +26,9 @@ Examples:
 
 tinctor resolve vat-run.csv --library palewater-dyehouse -c hollin-yellow -c bramble-red -c tarn-blue --unit g/L
 
-tinctor resolve run.csv --samples sheet.csv --library palewater-dyehouse -c hollin-yellow,tarn-blue --background offset
---background scatter --range-nm 400 700 --format csv
+tinctor resolve run.csv --samples sheet.csv -l palewater-dyehouse -c hollin-yellow,tarn-blue -b offset -b scatter -f csv
+
+tinctor resolve - -l palewater-dyehouse -c tarn-blue --range-nm 500 700 --dilution-factor 25 --dilution-factor-u 0.2 < one.csv
 """
 
 Names = Annotated[list[str], typer.Option("--component", "-c", help="Component to look for; repeat, or separate by commas.")]
@@ -91,14 +95,19 @@ def resolve(
 ) -> None:
     """Concentration of each known component in each measured spectrum, with its uncertainty and a word on whether to trust it.
 
-    Results are in the original sample: path length and dilution are undone. Exit codes: 0 done, 2 usage, 3 input refused,
-    4 nothing could be determined, 5 done with flags under --strict.
+    Results are in the original sample: path length and dilution are undone.
+
+    Exit codes: 0 done, 1 fault of the tool, 2 usage, 3 input refused, 4 nothing could be determined, 5 done with flags (--strict).
     """
     with guarded(as_json=output_format is Format.JSON):
-        spectra = _spectra(files, delimiter, decimal, layout)
-        spectra = _with_blank(
-            _with_cells(spectra, samples, path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u), blank
-        )
+        from tinctor.files import ReadOptions
+
+        options = ReadOptions(delimiter, decimal, layout)
+        spectra, notes = _spectra(files, options)
+        if output_format is not Format.JSON:  # there, standard error may have to be the error document and nothing else
+            _say(notes)
+        spectra = _with_cells(spectra, samples, path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u)
+        spectra = _with_blank(spectra, blank, options)
         document: dict[str, Any] = {
             "schema": "resolve/1",
             "library": library,
@@ -119,8 +128,12 @@ def resolve(
             put(json.dumps(document, ensure_ascii=False) + "\n", output)
             return
         response = _run(document)
-        _say_cautions(response)
-        put(_rendered(response, output_format, output), output)
+        if output_format is Format.JSON:
+            put(_rendered(response, output_format, output), output)
+            _say([*notes, *_cautions(response)])
+        else:
+            _say(_cautions(response))
+            put(_rendered(response, output_format, output), output)
         if strict and any(result.status != "accepted" for result in response.results):
             raise typer.Exit(Exit.DONE_WITH_FLAGS)
 
@@ -131,7 +144,9 @@ def _run(document: dict[str, Any]) -> ResolveResponse:
 
     response: ResolveResponse = run_checked("resolve", document)  # type: ignore[assignment]
     if all(result.status == "refused" for result in response.results):
-        lines = [f"{r.id}: {f.code}: {f.message}" for r in response.results for f in r.flags if f.severity == "refusal"]
+        from tinctor.report.text_table import printable
+
+        lines = [f"{printable(r.id)}: {f.code}: {f.message}" for r in response.results for f in r.flags if f.severity == "refusal"]
         raise UndeterminedError("\n".join(["nothing could be determined:", *dict.fromkeys(lines)]))
     return response
 
@@ -149,32 +164,30 @@ def _rendered(response: ResolveResponse, output_format: Format, output: Path | N
 
     from tinctor.report.resolve_table import resolve_table
 
-    terminal = output is None and sys.stdout.isatty()
+    terminal = output is None and sys.stdout is not None and sys.stdout.isatty()
     return resolve_table(response, width=get_terminal_size().columns if terminal else None, colour=terminal)
 
 
-def _spectra(files: list[str], delimiter: str | None, decimal: str | None, layout: str | None) -> list[Spectrum]:
+def _spectra(files: list[str], options: ReadOptions) -> tuple[list[Spectrum], list[str]]:
+    """The spectra of all files, and what the readers noticed."""
     from tinctor.errors import InputError
-    from tinctor.files import ReadOptions, read_spectra
+    from tinctor.files import read_spectra
 
-    options = ReadOptions(delimiter, decimal, layout)
     spectra: list[Spectrum] = []
-    seen: dict[str, str] = {}
+    notes: list[str] = []
+    seen: dict[str, tuple[str, str]] = {}
     for name in files:
         reading = read_spectra(name, options)
-        for note in reading.notes:
-            typer.echo(f"{reading.source}: {note}", err=True)
+        notes += [f"{reading.source}: {note}" for note in reading.notes]
         for spectrum in reading.spectra:
             if spectrum.id in seen:
-                raise InputError.single(
-                    "duplicate-id",
-                    reading.source,
-                    f"{spectrum.id!r} is in {seen[spectrum.id]} already",
-                    "rename one of the samples",
-                )
-            seen[spectrum.id] = reading.source
+                first_name, first_source = seen[spectrum.id]
+                # files of one name in two folders are told apart by their paths
+                here, there = (reading.source, first_source) if reading.source != first_source else (name, first_name)
+                raise InputError.single("duplicate-id", here, f"{spectrum.id!r} is in {there} already", "rename one of the samples")
+            seen[spectrum.id] = (name, reading.source)
         spectra += reading.spectra
-    return spectra
+    return spectra, notes
 
 
 def _with_cells(spectra: list[Spectrum], samples: Path | None, *values: float | None) -> list[Spectrum]:
@@ -204,17 +217,36 @@ def _with_cells(spectra: list[Spectrum], samples: Path | None, *values: float | 
     return changed
 
 
-def _with_blank(spectra: list[Spectrum], blank: str | None) -> list[Spectrum]:
+def _with_blank(spectra: list[Spectrum], blank: str | None, options: ReadOptions) -> list[Spectrum]:
     if blank is None:
         return spectra
     from tinctor.errors import InputError
-    from tinctor.files import read_spectra
     from tinctor.spectrum import SpectrumBatch
 
-    found = read_spectra(blank).spectra
+    found = _blank(blank, options)
     if len(found) != 1:
         raise InputError.single("one-blank", blank, f"expected one blank spectrum, found {len(found)}")
-    return [SpectrumBatch.of([spectrum]).minus_blank(found[0])[0] for spectrum in spectra]
+    changed = []
+    for spectrum in spectra:
+        try:
+            changed.append(SpectrumBatch.of([spectrum]).minus_blank(found[0])[0])
+        except InputError as error:
+            hint = "measure the blank at the wavelengths of the samples"
+            raise InputError.single("blank", f"--blank {blank}", error.faults[0].message, hint) from error
+    return changed
+
+
+def _blank(blank: str, options: ReadOptions) -> tuple[Spectrum, ...]:
+    """The blank as its file shows it (its layout need not be the samples'); the options settle what that leaves open."""
+    from tinctor.errors import InputError
+    from tinctor.files import read_spectra
+
+    try:
+        return read_spectra(blank).spectra
+    except InputError as error:
+        if error.faults[0].code != "ambiguous":
+            raise
+    return read_spectra(blank, options).spectra
 
 
 def _document(spectrum: Spectrum) -> dict[str, Any]:
@@ -227,6 +259,8 @@ def _background(terms: list[str] | None) -> list[str] | None:
     if terms is None:
         return None
     listed = [term.strip() for item in terms for term in item.split(",")]
+    if "none" in listed and len(listed) > 1:
+        raise typer.BadParameter(f"none stands alone, found {', '.join(listed)}", param_hint="--background")
     return [] if listed == ["none"] else listed
 
 
@@ -236,15 +270,18 @@ def _wavelengths(text: str | None) -> list[float] | None:
     try:
         return [float(part) for part in text.split(",")]
     except ValueError as error:
-        raise typer.BadParameter(f"expected wavelengths in nm separated by commas, found {text!r}") from error
+        raise typer.BadParameter(f"expected numbers separated by commas, found {text!r}", param_hint="--wavelengths-nm") from error
 
 
 def _given(**values: Any) -> dict[str, Any]:
     return {key: value for key, value in values.items() if value is not None}
 
 
-def _say_cautions(response: ResolveResponse) -> None:
-    """What a record warns of, once, where the result is read."""
-    for record in response.provenance.records:
-        if record.caution:
-            typer.echo(f"caution, {record.name}: {record.caution}", err=True)
+def _say(lines: Iterable[str]) -> None:
+    for line in lines:
+        typer.echo(line, err=True)
+
+
+def _cautions(response: ResolveResponse) -> list[str]:
+    """What the records warn of, each once, where the result is read."""
+    return [f"caution, {record.name}: {record.caution}" for record in response.provenance.records if record.caution]

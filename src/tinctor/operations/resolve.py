@@ -29,7 +29,7 @@ from tinctor.operations.shared import (
 from tinctor.resolve.engine import resolve
 from tinctor.resolve.resolution import Resolution
 from tinctor.resolve.settings import JudgementLimits, ResolveSettings
-from tinctor.spectrum import Spectrum, SpectrumBatch, same_axis
+from tinctor.spectrum import Spectrum, SpectrumBatch
 from tinctor.units import BASE_UNIT, check_unit, conversion_factor
 
 __all__ = ["ResolveRequest", "ResolveResponse", "run"]
@@ -168,11 +168,12 @@ def _components(request: ResolveRequest) -> tuple[list[Component], list[RecordUs
 
 def _spectra(request: ResolveRequest) -> list[Spectrum]:
     spectra = gather([(f".spectra[{k}]", spectrum.to_spectrum) for k, spectrum in enumerate(request.spectra)])
-    ids = [spectrum.id for spectrum in spectra]
-    if len(set(ids)) < len(ids):
-        k = next(k for k, i in enumerate(ids) if i in ids[:k])
+    first: dict[str, int] = {}
+    for k, spectrum in enumerate(spectra):
+        if first.setdefault(spectrum.id, k) == k:
+            continue
         raise InputError.single(
-            "duplicate-id", f".spectra[{k}].id", f"ids must differ, found {ids[k]!r} more than once", "rename the samples"
+            "duplicate-id", f".spectra[{k}].id", f"ids must differ, found {spectrum.id!r} more than once", "rename the samples"
         )
     return spectra
 
@@ -193,18 +194,10 @@ def _units(unit: str | None, components: list[Component]) -> tuple[tuple[str, ..
 
 def _by_axis(spectra: list[Spectrum]) -> list[list[int]]:
     """Places of the spectra that share an axis (and whether readings have their own uncertainty)."""
-    groups: list[list[int]] = []
+    groups: dict[tuple[bytes, bool], list[int]] = {}
     for k, spectrum in enumerate(spectra):
-        for group in groups:
-            first = spectra[group[0]]
-            if same_axis(first.wavelength_nm, spectrum.wavelength_nm) and (first.absorbance_u is None) == (
-                spectrum.absorbance_u is None
-            ):
-                group.append(k)
-                break
-        else:
-            groups.append([k])
-    return groups
+        groups.setdefault((spectrum.wavelength_nm.tobytes(), spectrum.absorbance_u is None), []).append(k)
+    return list(groups.values())
 
 
 def _compare_conditions(resolution: Resolution, conditions: ConditionsIn | None) -> None:

@@ -28,12 +28,15 @@ COLUMNS: Final = (
 
 
 def resolve_csv(response: ResolveResponse) -> str:
-    """Return the results as RFC 4180 text with a header row; empty fields where a component is refused.
+    """Return the results with a header row, quoted as in RFC 4180, lines ending in a line feed; empty fields where a component
+    is refused. Ids and names stand as they are, whatever they hold: nothing is put before a leading `=`.
 
     `flags` lists the codes that concern the component, or the whole spectrum, between blanks.
     """
     out = io.StringIO()
     writer = csv.writer(out, lineterminator="\n")
+    # the writer quotes what its own line ending needs, and a carriage return inside a field ends a line for other readers
+    quoting = csv.writer(out, lineterminator="\n", quoting=csv.QUOTE_ALL)
     writer.writerow(COLUMNS)
     for result in response.results:
         for c in result.components:
@@ -41,5 +44,6 @@ def resolve_csv(response: ResolveResponse) -> str:
             low, high = c.interval or (None, None)
             numbers = (c.concentration, c.unconstrained, c.u, low, high, c.decision_limit, c.detection_limit, c.percent_per_nm)
             cells = ["" if number is None else repr(number) for number in numbers]
-            writer.writerow([result.id, c.name, c.status, c.unit, *cells, " ".join(codes)])
+            line = quoting if "\r" in result.id + c.name else writer
+            line.writerow([result.id, c.name, c.status, c.unit, *cells, " ".join(codes)])
     return out.getvalue()

@@ -8,7 +8,7 @@ from typing import Final
 from tinctor.operations.resolve import ResolveResponse
 from tinctor.operations.resolve_results import ComponentResult, SpectrumResult
 from tinctor.report.rounding import rounded, significant
-from tinctor.report.text_table import Cell, styled, text_table
+from tinctor.report.text_table import Cell, printable, styled, text_table
 
 __all__ = ["resolve_table"]
 
@@ -33,8 +33,8 @@ def resolve_table(response: ResolveResponse, *, width: int | None = None, colour
     first = response.results[0]
     heading = [
         ("", "sample"),
-        *((c.name, f"{c.unit}  ") for c in first.components),
-        *((f"total {a.name}", f"{a.unit}  ") for a in first.analytes),
+        *((printable(c.name), f"{c.unit}  ") for c in first.components),
+        *((f"total {printable(a.name)}", f"{a.unit}  ") for a in first.analytes),
         ("", "status"),
     ]
     rows = [_row(result) for result in response.results]
@@ -49,7 +49,7 @@ def _row(result: SpectrumResult) -> list[Cell]:
     totals = [
         (f"{_value(a.concentration, a.u, None)}  ", STYLES["refused"] if a.status == "refused" else "") for a in result.analytes
     ]
-    return [(result.id, ""), *map(_component, result.components), *totals, (result.status, STYLES[result.status])]
+    return [(printable(result.id), ""), *map(_component, result.components), *totals, (result.status, STYLES[result.status])]
 
 
 def _component(c: ComponentResult) -> Cell:
@@ -73,11 +73,11 @@ def _flag_lines(result: SpectrumResult, width: int, *, colour: bool) -> list[str
     flags = [flag for flag in result.flags if flag.code != "below-decision-limit"]
     if not flags:
         return []
-    lines = ["", styled(result.id, BOLD, colour=colour)]
+    lines = ["", styled(printable(result.id), BOLD, colour=colour)]
     for flag in flags:
         head = f"{flag.severity}: {flag.code}."
         wrapped = textwrap.wrap(
-            f"{head} {flag.message}", max(width, 40), initial_indent="  ", subsequent_indent="  ", break_on_hyphens=False
+            f"{head} {printable(flag.message)}", max(width, 40), initial_indent="  ", subsequent_indent="  ", break_on_hyphens=False
         )
         if wrapped[0].startswith(f"  {head}"):
             wrapped[0] = f"  {styled(head, GRADES[flag.severity], colour=colour)}{wrapped[0][2 + len(head) :]}"
@@ -92,7 +92,13 @@ def _closing(response: ResolveResponse) -> list[str]:
         "value ± standard uncertainty (k = 1); < detection limit: not detected; * needs a look",
         ", ".join(f"{count} {word}" for word, count in counts.items() if count) + f" of {len(response.results)} spectra",
     ]
+    if any(_has_refused(result) for result in response.results):
+        lines.insert(2, "refused: no figure can be stood behind; the reason stands above under the sample's name")
     sources = ("library-scale", "library-shape")
     undeclared = {source: [c.name for c in response.results[0].components if source in c.not_declared] for source in sources}
     lines += [f"not in the uncertainty, because nobody has stated it: {s} of {', '.join(n)}" for s, n in undeclared.items() if n]
     return lines
+
+
+def _has_refused(result: SpectrumResult) -> bool:
+    return "refused" in {result.status, *(c.status for c in result.components), *(a.status for a in result.analytes)}

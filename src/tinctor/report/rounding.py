@@ -20,6 +20,8 @@ def rounded(value: float, u: float) -> tuple[str, str]:
     ('12350', '870')
     >>> rounded(3.2e-9, 1.234e-10)
     ('3.20e-09', '0.12e-09')
+    >>> rounded(1.234e12, 3e10)
+    ('1.234e+12', '0.030e+12')
     """
     if not (u > 0 and math.isfinite(u)):
         return significant(value, 4), significant(u, 2)
@@ -27,7 +29,7 @@ def rounded(value: float, u: float) -> tuple[str, str]:
     if round(u, 1 - exponent) >= 10.0 ** (exponent + 1):  # 0.0996 becomes 0.10
         exponent += 1
     decimals = 1 - exponent
-    if decimals > 7:
+    if decimals > 7 or exponent > 9:
         return _scientific(value, u, decimals)
     shown_value, shown_u = round(value, decimals) + 0.0, round(u, decimals)
     places = max(decimals, 0)
@@ -54,5 +56,9 @@ def significant(value: float, figures: int) -> str:
 def _scientific(value: float, u: float, decimals: int) -> tuple[str, str]:
     """Both numbers with the exponent of the larger, so that they can be compared at a glance."""
     power = math.floor(math.log10(max(abs(value), u)))
+    if round(max(abs(value), u), decimals) >= 10.0 ** (power + 1):  # 9.9996 becomes 10.000
+        power += 1
     places = max(decimals + power, 0)
-    return f"{value / 10.0**power:.{places}f}e{power:+03d}", f"{u / 10.0**power:.{places}f}e{power:+03d}"
+    # + 0.0: no minus before a zero
+    shown_value, shown_u = (round(number / 10.0**power, places) + 0.0 for number in (value, u))
+    return f"{shown_value:.{places}f}e{power:+03d}", f"{shown_u:.{places}f}e{power:+03d}"

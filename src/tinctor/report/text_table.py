@@ -8,12 +8,32 @@ from __future__ import annotations
 import unicodedata
 from collections.abc import Sequence
 
-__all__ = ["Cell", "shown_width", "styled", "text_table"]
+__all__ = ["Cell", "printable", "shown_width", "styled", "text_table"]
 
 #: A cell's text, and the terminal code that emphasises it ("" for none).
 Cell = tuple[str, str]
 
 RESET = "\x1b[0m"
+
+#: Marks that turn the direction of what follows, by their class in the Unicode character database.
+TURNING = frozenset({"LRE", "RLE", "LRO", "RLO", "PDF", "LRI", "RLI", "FSI", "PDI"})
+
+
+def printable(text: str) -> str:
+    """Return a text with what would steer a terminal, break the line or turn the reading direction written as an escape.
+
+    Examples
+    --------
+    >>> print(printable("vat-3"), printable("a\\x1b[31mb\\nc"))
+    vat-3 a\\x1b[31mb\\nc
+    """
+    if text.isprintable():
+        return text
+    return "".join(c.encode("unicode_escape").decode() if _steers(c) else c for c in text)
+
+
+def _steers(c: str) -> bool:
+    return unicodedata.category(c) in ("Cc", "Cs", "Zl", "Zp") or unicodedata.bidirectional(c) in TURNING
 
 
 def shown_width(text: str) -> int:

@@ -1,0 +1,61 @@
+"""The names of the Python package: none is lost or added unawares, each is the thing it says, and none costs before it is used."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+from importlib import import_module
+from types import ModuleType
+
+import pytest
+
+import tinctor
+
+#: Name -> module and name of what it stands for.
+NAMES = {
+    "Collection": "tinctor.library Collection",
+    "Component": "tinctor.component Component",
+    "Conditions": "tinctor.component Conditions",
+    "InputError": "tinctor.errors InputError",
+    "NoiseModel": "tinctor.noise NoiseModel",
+    "Resolution": "tinctor.resolve.resolution Resolution",
+    "ResolveSettings": "tinctor.resolve.settings ResolveSettings",
+    "Spectrum": "tinctor.spectrum Spectrum",
+    "SpectrumBatch": "tinctor.spectrum SpectrumBatch",
+    "TinctorError": "tinctor.errors TinctorError",
+    "UndeterminedError": "tinctor.errors UndeterminedError",
+    "__version__": "tinctor.version __version__",
+    "load_collection": "tinctor.library load_collection",
+    "read_spectra": "tinctor.files read_spectra",
+    "resolve_batch": "tinctor.resolve.engine resolve",
+    "run_document": "tinctor.operations.registry run_document",
+}
+
+
+def test_the_names_are_these_in_order() -> None:
+    assert tinctor.__all__ == sorted(NAMES)
+    assert dir(tinctor) == sorted(NAMES)
+
+
+@pytest.mark.parametrize(("name", "home"), NAMES.items())
+def test_each_name_is_what_it_says(name: str, home: str) -> None:
+    module, attribute = home.split()
+    assert getattr(tinctor, name) is getattr(import_module(module), attribute)
+
+
+def test_resolve_is_the_subpackage_and_stays_it() -> None:
+    assert callable(tinctor.resolve_batch)
+    assert isinstance(import_module("tinctor.resolve"), ModuleType)
+    assert import_module("tinctor.resolve") is tinctor.resolve  # type: ignore[attr-defined]
+
+
+@pytest.mark.parametrize("name", sorted(set(NAMES) - {"__version__"}))
+def test_a_name_can_be_the_first_thing_imported(name: str) -> None:
+    code = (
+        "import sys, tinctor\n"
+        "assert not {'numpy', 'pydantic', 'typer'} & set(sys.modules)\n"
+        f"from tinctor import {name}\n"
+        "assert not {'scipy', 'typer', 'rich'} & set(sys.modules)\n"
+    )
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
+    assert done.returncode == 0, done.stderr
