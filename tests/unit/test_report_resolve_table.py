@@ -83,3 +83,41 @@ def test_columns_stand_under_one_another_for_wide_characters() -> None:
     lines = [line for line in resolve_table(named("染料染料", "abcdefgh")).splitlines() if line.endswith("accepted")]
     wide, narrow = lines
     assert narrow.index("±") - wide.index("±") == 4  # four characters of double width
+
+
+def test_a_table_says_refused_not_detected_and_flagged_in_words() -> None:
+    twin = {"name": "twin", "wavelength_nm": [380, 720], "mass_absorptivity": [5.0, 10.0]}
+    other = {**twin, "name": "other", "mass_absorptivity": [10.0, 20.0]}
+    text = resolve_table(response(components=["hollin-yellow", twin, other]))
+    assert text.count("refused") >= 2
+    assert "refusal: collinear." in text
+    assert "twin" in text
+    absent = response(components=["hollin-yellow", "bramble-red", "tarn-blue", "quill-violet-acid"])
+    assert "< 0." in resolve_table(absent)
+    assert "library-scale" not in resolve_table(absent)
+    assert "nobody has stated it: library-scale of twin, other" in text
+
+
+def test_words_are_wrapped_to_the_terminal() -> None:
+    result = response(components=["hollin-yellow", "tarn-blue"])
+    narrow = resolve_table(result, width=60)
+    words = narrow.split("\n\n", 1)[1].rsplit("\n\n", 1)[0]
+    assert max(len(line) for line in words.splitlines()) <= 60
+    assert "\x1b" not in narrow
+
+
+def test_ids_of_any_kind_stay_as_they_are() -> None:
+    spectrum = copy.deepcopy(REQUEST["spectra"][0])
+    ids = ['=1+2, "x"', "染料 7", "[red]a[/red]", "<script>"]
+    result = response(spectra=[{**spectrum, "id": i} for i in ids])
+    table = resolve_table(result)
+    for i in ids:
+        assert i in table
+    rows = resolve_csv(result)
+    assert rows.splitlines()[0] == ",".join(COLUMNS)
+    assert '"=1+2, ""x""",hollin-yellow' in rows
+
+
+def test_totals_of_an_analyte_have_a_column() -> None:
+    text = resolve_table(response(components=["quill-violet-acid", "quill-violet-alkaline", "bramble-red"]))
+    assert "total quill-violet" in text

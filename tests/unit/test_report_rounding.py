@@ -41,3 +41,31 @@ def test_what_is_shown_is_the_number_to_half_a_last_digit(value: float, u: float
 @given(st.floats(-1e14, 1e14), st.integers(1, 6))
 def test_significant_figures_hold_the_number_to_their_last_digit(value: float, figures: int) -> None:
     assert float(significant(value, figures)) == pytest.approx(value, rel=0.501 * 10.0 ** (1 - figures), abs=0)
+
+
+@pytest.mark.parametrize(
+    ("value", "u", "shown"),
+    [
+        (0.0201, 0.0003, ("0.02010", "0.00030")),
+        (12.3456, 0.0996, ("12.35", "0.10")),
+        (12.3456, 0.0994, ("12.346", "0.099")),
+        (-0.0004, 0.0012, ("-0.0004", "0.0012")),
+        (-0.00001, 0.012, ("0.000", "0.012")),
+        (98765.0, 4321.0, ("98800", "4300")),
+        (1.5e-9, 2.345e-10, ("1.50e-09", "0.23e-09")),
+        (0.0, 0.0, ("0", "0")),
+    ],
+)
+def test_two_significant_figures_of_the_uncertainty_and_a_value_to_match(value: float, u: float, shown: tuple[str, str]) -> None:
+    """GUM 7.2.6 (JCGM 100:2008): at most two significant digits."""
+    assert rounded(value, u) == shown
+
+
+def test_significant_figures() -> None:
+    assert [significant(v, 2) for v in (0.0000662, 1234.0, 0.995, -0.0125, 3e-12)] == [
+        "0.000066",
+        "1200",
+        "0.99",
+        "-0.013",
+        "3.0e-12",
+    ]

@@ -38,6 +38,8 @@ class Design:
         Columns as they multiply the coefficients (absorptivity per cm; shapes of unit size).
     slope : array (m, p)
         d(absorptivity)/d(wavelength), per nm.
+    curvature : array (m, p)
+        Second derivative, per nm^2: what a fitted shift adds beyond its own column.
     shape_variance : array (m, p)
         Squared standard uncertainty of the absorptivity, wavelength by wavelength (zero where none was stated).
     independent : array (q,) of bool
@@ -56,6 +58,7 @@ class Design:
     wavelength_nm: FloatArray
     X: FloatArray
     slope: FloatArray
+    curvature: FloatArray
     shape_variance: FloatArray
     independent: np.ndarray
     Q: FloatArray
@@ -86,6 +89,7 @@ class Design:
             self.wavelength_nm[keep],
             self.X[keep],
             self.slope[keep],
+            self.curvature[keep],
             self.shape_variance[keep],
             self.shift,
         )
@@ -122,7 +126,11 @@ def build_design(wavelength_nm: FloatArray, components: Sequence[Component], bac
         When a wavelength lies outside a component's range (nothing is extrapolated).
     """
     X = [resample(c.wavelength_nm, c.absorptivity, wavelength_nm) for c in components]
-    slope = [resample(c.wavelength_nm, derivative(c.wavelength_nm, c.absorptivity), wavelength_nm) for c in components]
+    slopes = [derivative(c.wavelength_nm, c.absorptivity) for c in components]
+    slope = [resample(c.wavelength_nm, de, wavelength_nm) for c, de in zip(components, slopes, strict=True)]
+    curvature = [
+        resample(c.wavelength_nm, derivative(c.wavelength_nm, de), wavelength_nm) for c, de in zip(components, slopes, strict=True)
+    ]
     variance = [_shape_variance(c, wavelength_nm) for c in components]
     terms = tuple(term for term in background if term != "shift")
     shapes = [_background_shape(term, wavelength_nm) for term in terms]
@@ -132,6 +140,7 @@ def build_design(wavelength_nm: FloatArray, components: Sequence[Component], bac
         wavelength_nm,
         np.column_stack([*X, *shapes]),
         np.column_stack(slope),
+        np.column_stack(curvature),
         np.column_stack(variance),
         "shift" in background,
     )
@@ -182,12 +191,13 @@ def _factored(
     wavelength_nm: FloatArray,
     X: FloatArray,
     slope: FloatArray,
+    curvature: FloatArray,
     shape_variance: FloatArray,
     shift: bool,
 ) -> Design:
     Q, Rinv, independent = orthonormal_factors(X)
     non_negative = np.array([True] * len(names) + [term == "scatter" for term in terms])
-    return Design(names, terms, wavelength_nm, X, slope, shape_variance, independent, Q, Rinv, non_negative, shift)
+    return Design(names, terms, wavelength_nm, X, slope, curvature, shape_variance, independent, Q, Rinv, non_negative, shift)
 
 
 def _shape_variance(component: Component, wavelength_nm: FloatArray) -> FloatArray:

@@ -177,15 +177,16 @@ def _fit_chunk(
     arrays = work.of(len(A))
     residual, variance, shape_variance, weight, D, product = arrays
     y, smallest_pivot = _first_estimate(columns, A, keep)
+    shift_nm = np.zeros((len(A), 1))
     for _ in range(SHIFT_ROUNDS if design.shift else 1):
-        s, sums, right = _weighted_sums(columns, A, y, noise, keep, reading_u, arrays)
+        s, sums, right = _weighted_sums(columns, A, y, shift_nm, noise, keep, reading_u, arrays)
         gram = _effective(columns, sums, s)
         factor = Cholesky(gram, columns.k)
         step = factor.solve(right)
-        y = y + step[:, :r]
+        y, shift_nm = y + step[:, :r], step[:, r:]
     residual -= np.matmul(step[:, :r], design.Q.T, out=product)
     if design.shift:
-        residual -= np.multiply(step[:, r:], D, out=product)
+        residual -= np.multiply(shift_nm, D, out=product)
     if keep is not None:
         residual *= keep
     points = np.full(len(A), float(A.shape[1])) if keep is None else keep.sum(axis=1)
@@ -194,7 +195,7 @@ def _fit_chunk(
     optimality = _optimality(columns, product, D, gram, chi_square)
     noise_gram, shape_gram = _spread_grams(columns, s, weight, variance, shape_variance)
     return FitBlock(
-        coordinates=np.column_stack([y, step[:, r:]]),
+        coordinates=np.column_stack([y, shift_nm]),
         gram=gram,
         noise_gram=noise_gram,
         shape_gram=shape_gram,
@@ -215,6 +216,7 @@ def _weighted_sums(
     columns: FitColumns,
     A: FloatArray,
     y: FloatArray,
+    shift_nm: FloatArray,
     noise: NoiseModel,
     keep: FloatArray | None,
     reading_u: FloatArray | None,
@@ -230,6 +232,8 @@ def _weighted_sums(
     fitted = np.matmul(y, design.Q.T, out=residual)
     _reading_variance(fitted, noise, reading_u, variance)
     np.subtract(A, fitted, out=residual)
+    if design.shift:  # second order of the shift found so far: its column holds the first alone
+        residual -= np.matmul(0.5 * shift_nm**2 * s, design.curvature.T, out=product)
     np.matmul(s, design.slope.T, out=D)
     if columns.has_shape_u:
         np.matmul(s**2, design.shape_variance.T, out=shape_variance)

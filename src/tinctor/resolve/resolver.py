@@ -283,7 +283,8 @@ def _standardised_residual(design: Design, readings: Readings, coordinates: Floa
     fitted, D = y @ design.Q.T, s @ design.slope.T
     residual = readings.absorbance - fitted
     if design.shift:
-        residual -= coordinates[:, -1:] * D
+        shift_nm = coordinates[:, -1:]
+        residual -= shift_nm * D + (0.5 * shift_nm**2 * s) @ design.curvature.T
     own = readings.absorbance_u
     variance = noise.reading_variance(np.minimum(fitted, 10.0)) if own is None else own**2
     root = np.sqrt(variance + (s**2) @ design.shape_variance.T)
