@@ -17,7 +17,7 @@ ORDER = (
     ("axis",),
     ("noise", "spectrum", "component"),
     ("files", "resolve", "pls"),
-    ("library", "plan"),
+    ("library", "plan", "standards"),
     ("operations",),
     ("report",),
     ("service",),
@@ -27,19 +27,19 @@ ORDER = (
 LEVELS = {package: level for level, packages in enumerate(ORDER) for package in packages}
 
 #: Pairs that lie below one another by level, and still must not meet.
-FORBIDDEN = {("library", "resolve"), ("library", "pls"), ("plan", "files")}
+FORBIDDEN = {("library", "resolve"), ("library", "pls"), ("plan", "files"), ("standards", "files"), ("resolve", "files")}
 DOMAIN = {"spectrum", "component", "noise", "arrays", "axis", "errors", "units", "version"}
 
 #: Third-party packages each package may import.
 THIRD_PARTY = {
     "version": set(), "errors": set(), "units": set(), "arrays": {"numpy"}, "axis": {"numpy"}, "noise": {"numpy"},
     "spectrum": {"numpy"}, "component": {"numpy"}, "files": {"numpy"}, "library": {"numpy", "pydantic"},
-    "resolve": {"numpy", "threadpoolctl"}, "operations": {"numpy", "pydantic"}, "report": set(),
+    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "operations": {"numpy", "pydantic"}, "report": set(),
     "cli": {"typer", "click"}, "__main__": set(), "__init__": set(),
 }  # fmt: skip
 
 #: Modules that alone may import a package.
-ONE_HOME = {"threadpoolctl": {"resolve/threads.py"}}
+ONE_HOME = {"threadpoolctl": {"resolve/threads.py"}, "scipy": {"standards/distributions.py"}}
 
 
 def modules() -> list[Path]:

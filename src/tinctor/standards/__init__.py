@@ -1,0 +1,1 @@
+"""From weighed standards to absorptivities, linear range and inverse prediction: numbers only, no files, no JSON."""

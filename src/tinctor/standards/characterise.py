@@ -1,0 +1,221 @@
+"""A series of standards to an absorptivity spectrum: what was used, how far it holds, how sure it is."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from tinctor.arrays import FloatArray, quoted
+from tinctor.errors import InputError
+from tinctor.standards.distributions import t_tail_two_sided
+from tinctor.standards.line import Lines
+from tinctor.standards.linearity import LinearityTest, Outlier, find_outliers, tested_ranges
+from tinctor.standards.notes import Dropped, Note, dropped_for_range, notes_of
+from tinctor.standards.score import Scores, fitted_lines, scored
+from tinctor.standards.series import Series, points_of
+from tinctor.standards.settings import StandardsSettings
+from tinctor.standards.spread import Spread, spread_of
+from tinctor.standards.superposition import Superposition, superposition
+
+__all__ = ["Characterisation", "InterceptTest", "MarkedStandard", "characterise"]
+
+#: Fewer preparations than this have none left out by rule.
+LEAST_LEFT = 3
+
+
+@dataclass(frozen=True, slots=True)
+class InterceptTest:
+    """Intercept of the whole-spectrum line as an amount, its t and probability; None where there is no degree of freedom."""
+
+    fitted: bool
+    amount: float | None
+    t: float | None
+    probability: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class MarkedStandard:
+    """A standard off the curve of the others, and whether it was left out."""
+
+    id: str
+    studentised: float
+    limit: float
+    leverage: float
+    left_out: bool
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Characterisation:
+    """What a series says.
+
+    Attributes
+    ----------
+    wavelength_nm : array (m,)
+        Where at least one standard could be read.
+    lines : Lines
+        Over the standards used, at those wavelengths.
+    points, scores
+        The standards used (with the blanks where there is an intercept) and their whole-spectrum scores.
+    spread
+        Uncertainties: common to all wavelengths, and of each.
+    linear_to
+        Highest concentration times path shown to be linear and of one shape; None where nothing shows it.
+    tests, marked, shape, intercept
+        Linearity tests, standards marked, superposition, test of the intercept.
+    dropped, notes
+        What was left out, and what needs a look, in words.
+    """
+
+    wavelength_nm: FloatArray
+    lines: Lines
+    points: Series
+    scores: Scores
+    spread: Spread
+    linear_to: float | None
+    tests: tuple[LinearityTest, ...]
+    marked: tuple[MarkedStandard, ...]
+    shape: Superposition
+    intercept: InterceptTest
+    dropped: tuple[Dropped, ...]
+    notes: tuple[Note, ...]
+
+    @property
+    def absorptivity(self) -> FloatArray:
+        """Slope of the lines, L mol-1 cm-1 or L g-1 cm-1, (m,)."""
+        return self.lines.slope
+
+
+def characterise(series: Series, settings: StandardsSettings | None = None) -> Characterisation:
+    """Return the absorptivity spectrum of a series of standards.
+
+    Raises
+    ------
+    InputError
+        When nothing is left to fit, or an id to leave out is not there.
+
+    Examples
+    --------
+    >>> from tinctor.spectrum import Spectrum
+    >>> from tinctor.standards.series import Standard, series_of
+    >>> scans = [Standard(Spectrum(f"s{k}", [500.0, 510.0], [0.1 * k, 0.2 * k]), 0.01 * k) for k in (1, 2, 3, 4)]
+    >>> result = characterise(series_of(scans))
+    >>> result.absorptivity.round(6), result.linear_to
+    (array([10., 20.]), 0.04)
+    """
+    settings = settings or StandardsSettings()
+    kept, dropped = _without(series, settings.leave_out, "left out by the user's word")
+    kept, hidden = _with_readings(kept)
+    through_zero, intercept = _intercept(kept, settings)
+    kept, marked = _screened(kept, settings, through_zero=through_zero)
+    dropped += hidden + [Dropped(m.id, "off the curve of the others, left out by rule") for m in marked if m.left_out]
+    points = points_of(kept, through_zero=through_zero)
+    scores, _ = scored(points, fitted_lines(points, settings, through_zero=through_zero), settings)
+    tests = tested_ranges(
+        scores.amount,
+        scores.value,
+        scores.weight,
+        through_zero=through_zero,
+        significance=settings.significance,
+        allowed=settings.allowed_nonlinearity,
+    )
+    linear = tests[-1].amount if tests[-1].passed else None
+    within = points if linear is None else points.take(np.flatnonzero(points.amount <= linear))
+    shape = superposition(within, settings, through_zero=through_zero)
+    linear_to = None if linear is None or shape.holds_to is None else min(linear, shape.holds_to)
+    if linear_to is not None:
+        dropped += dropped_for_range(points, linear_to, linear)
+        points = points.take(np.flatnonzero(points.amount <= linear_to))
+    points = points.on(points.used.any(axis=0) & (points.amount[:, None] * points.used).any(axis=0))
+    lines = fitted_lines(points, settings, through_zero=through_zero)
+    scores, _ = scored(points, lines, settings)
+    result = Characterisation(
+        wavelength_nm=points.wavelength_nm,
+        lines=lines,
+        points=points,
+        scores=scores,
+        spread=spread_of(points, lines, scores, settings),
+        linear_to=linear_to,
+        tests=tests,
+        marked=marked,
+        shape=shape,
+        intercept=intercept,
+        dropped=tuple(dropped),
+        notes=(),
+    )
+    return replace(result, notes=notes_of(result, series, settings))
+
+
+def _without(series: Series, ids: tuple[str, ...], reason: str) -> tuple[Series, list[Dropped]]:
+    unknown = [i for i in ids if i not in series.ids]
+    if unknown:
+        raise InputError.single(
+            "unknown-standard", ".leave_out", f"no preparation is called {quoted(unknown)}", f"they are {quoted(series.ids)}"
+        )
+    rows = np.array([k for k, i in enumerate(series.ids) if i not in ids], dtype=int)
+    if not rows.size:
+        raise InputError.single("no-standards", ".leave_out", "every standard is to be left out: nothing remains")
+    return series.take(rows), [Dropped(i, reason) for i in ids]
+
+
+def _with_readings(series: Series) -> tuple[Series, list[Dropped]]:
+    """Leave out standards of which so much is saturated that the rest says little about the band."""
+    if not series.used.any():
+        raise InputError.single(
+            "saturated",
+            ".standards",
+            "every reading of every standard is above the absorbance limit",
+            "dilute, or use a shorter cell",
+        )
+    settings = StandardsSettings(intercept="zero")
+    points = points_of(series, through_zero=True)
+    _, shown = scored(points, fitted_lines(points, settings, through_zero=True), settings)
+    rows = np.flatnonzero(shown)
+    if not rows.size:
+        raise InputError.single(
+            "saturated", ".standards", "no standard shows half of its band below the absorbance limit", "dilute"
+        )
+    reason = "more than half of the band is above the absorbance limit"
+    return series.take(rows), [Dropped(series.ids[k], reason) for k in np.flatnonzero(~shown)]
+
+
+def _intercept(series: Series, settings: StandardsSettings) -> tuple[bool, InterceptTest]:
+    """Whether the line goes through zero, and the test behind that."""
+    points = points_of(series, through_zero=False)
+    if settings.intercept == "zero" or np.unique(points.amount).size < 2:
+        if settings.intercept == "fitted":
+            message = "a fitted intercept needs two levels (a blank is one), found one"
+            raise InputError.single("too-few-levels", ".intercept", message, 'use "zero"')
+        return True, InterceptTest(False, None, None, None)
+    line = scored(points, fitted_lines(points, settings, through_zero=False), settings)[0].line
+    degrees = float(line.degrees_of_freedom[0])
+    if degrees <= 0:
+        return settings.intercept != "fitted", InterceptTest(settings.intercept == "fitted", float(line.intercept[0]), None, None)
+    u = float(line.intercept_u[0])
+    t = float(line.intercept[0]) / u if u > 0 else 0.0
+    probability = float(t_tail_two_sided(t, degrees))
+    fitted = settings.intercept == "fitted" or probability < settings.significance
+    return not fitted, InterceptTest(fitted, float(line.intercept[0]), t, probability)
+
+
+def _screened(series: Series, settings: StandardsSettings, *, through_zero: bool) -> tuple[Series, tuple[MarkedStandard, ...]]:
+    """Mark standards off the curve; leave them out, the worst first and one at a time, where that is the rule."""
+    left_out: list[MarkedStandard] = []
+    while True:
+        outliers = _outliers(series, settings, through_zero=through_zero)
+        if settings.outliers != "leave-out" or not outliers or len(series) <= LEAST_LEFT:
+            return series, (*left_out, *(_marked(series, o, left_out=False) for o in outliers))
+        left_out.append(_marked(series, outliers[0], left_out=True))
+        series = series.take(np.array([k for k in range(len(series)) if k != outliers[0].row]))
+
+
+def _outliers(series: Series, settings: StandardsSettings, *, through_zero: bool) -> list[Outlier]:
+    points = points_of(series, through_zero=through_zero)
+    blanks = len(points) - len(series)
+    scores, _ = scored(points, fitted_lines(points, settings, through_zero=through_zero), settings)
+    found = find_outliers(scores.amount, scores.value, scores.weight, through_zero=through_zero, significance=settings.significance)
+    return [replace(o, row=o.row - blanks) for o in found if o.row >= blanks]
+
+
+def _marked(series: Series, outlier: Outlier, *, left_out: bool) -> MarkedStandard:
+    return MarkedStandard(series.ids[outlier.row], outlier.studentised, outlier.limit, outlier.leverage, left_out)
