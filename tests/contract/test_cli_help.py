@@ -37,6 +37,11 @@ def test_the_commands_are_those_of_the_contract_so_far() -> None:
     assert set(COMMANDS) == {
         (),
         ("resolve",),
+        ("standards",),
+        ("determine",),
+        ("mixtures",),
+        ("transfer",),
+        ("library", "add"),
         ("json",),
         ("schema",),
         ("library",),

@@ -9,11 +9,13 @@ from typing import Annotated
 import typer
 
 from tinctor.cli.faults import Exit, fail, guarded
+from tinctor.cli.library_add import EPILOG, add
 from tinctor.cli.output import Format, put
 
 __all__ = ["app"]
 
-app = typer.Typer(help="List, show and check the collections of component records.", no_args_is_help=True)
+app = typer.Typer(help="List, show, check and add to the collections of component records.", no_args_is_help=True)
+app.command("add", epilog=EPILOG)(add)
 
 
 @app.command("list")

@@ -9,8 +9,12 @@ from typing import Annotated
 import typer
 
 from tinctor.cli import documents, library
+from tinctor.cli.determine import EPILOG as DETERMINE_EPILOG
+from tinctor.cli.determine import TRANSFER_EPILOG, determine, transfer
 from tinctor.cli.output import speak_utf8
 from tinctor.cli.resolve import EPILOG, resolve
+from tinctor.cli.standards import EPILOG as STANDARDS_EPILOG
+from tinctor.cli.standards import MIXTURES_EPILOG, mixtures, standards
 from tinctor.version import __version__
 
 __all__ = ["app", "main"]
@@ -29,6 +33,10 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
 )
 app.command("resolve", epilog=EPILOG)(resolve)
+app.command("standards", epilog=STANDARDS_EPILOG)(standards)
+app.command("determine", epilog=DETERMINE_EPILOG)(determine)
+app.command("mixtures", epilog=MIXTURES_EPILOG)(mixtures)
+app.command("transfer", epilog=TRANSFER_EPILOG)(transfer)
 app.command("json")(documents.run_json)
 app.command("schema")(documents.show_schema)
 app.add_typer(library.app, name="library")

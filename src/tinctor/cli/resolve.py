@@ -11,13 +11,10 @@ import typer
 
 from tinctor.cli.faults import Exit, guarded
 from tinctor.cli.output import Format, put
+from tinctor.cli.reading import document_of, given, read_all, say, with_blank, with_cells
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
-
-    from tinctor.files import ReadOptions
     from tinctor.operations.resolve import ResolveResponse
-    from tinctor.spectrum import Spectrum
 
 __all__ = ["EPILOG", "resolve"]
 
@@ -103,11 +100,11 @@ def resolve(
         from tinctor.files import ReadOptions
 
         options = ReadOptions(delimiter, decimal, layout)
-        spectra, notes = _spectra(files, options)
+        spectra, notes = read_all(files, options)
         if output_format is not Format.JSON:  # there, standard error may have to be the error document and nothing else
-            _say(notes)
-        spectra = _with_cells(spectra, samples, path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u)
-        spectra = _with_blank(spectra, blank, options)
+            say(notes)
+        spectra = with_cells(spectra, samples, path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u)
+        spectra = with_blank(spectra, blank, options)
         document: dict[str, Any] = {
             "schema": "resolve/1",
             "library": library,
@@ -117,22 +114,22 @@ def resolve(
             "wavelength_range_nm": list(range_nm) if range_nm else None,
             "wavelengths_nm": _wavelengths(wavelengths_nm),
             "absorbance_limit": absorbance_limit,
-            "noise": _given(floor=noise_floor, transmittance=noise_transmittance, wavelength_nm=noise_wavelength_nm),
+            "noise": given(floor=noise_floor, transmittance=noise_transmittance, wavelength_nm=noise_wavelength_nm),
             "coverage": coverage,
             "target_relative_u": target_relative_u,
-            "conditions": _given(solvent=solvent, ph=ph, temperature_c=temperature_c, bandwidth_nm=bandwidth_nm),
+            "conditions": given(solvent=solvent, ph=ph, temperature_c=temperature_c, bandwidth_nm=bandwidth_nm),
         }
         document = {key: value for key, value in document.items() if value is not None and value != {}}
-        document["spectra"] = [_document(spectrum) for spectrum in spectra]
+        document["spectra"] = [document_of(spectrum) for spectrum in spectra]
         if request:
             put(json.dumps(document, ensure_ascii=False) + "\n", output)
             return
         response = _run(document)
         if output_format is Format.JSON:
             put(_rendered(response, output_format, output), output)
-            _say([*notes, *_cautions(response)])
+            say([*notes, *_cautions(response)])
         else:
-            _say(_cautions(response))
+            say(_cautions(response))
             put(_rendered(response, output_format, output), output)
         if strict and any(result.status != "accepted" for result in response.results):
             raise typer.Exit(Exit.DONE_WITH_FLAGS)
@@ -168,93 +165,6 @@ def _rendered(response: ResolveResponse, output_format: Format, output: Path | N
     return resolve_table(response, width=get_terminal_size().columns if terminal else None, colour=terminal)
 
 
-def _spectra(files: list[str], options: ReadOptions) -> tuple[list[Spectrum], list[str]]:
-    """The spectra of all files, and what the readers noticed."""
-    from tinctor.errors import InputError
-    from tinctor.files import read_spectra
-
-    spectra: list[Spectrum] = []
-    notes: list[str] = []
-    seen: dict[str, tuple[str, str]] = {}
-    for name in files:
-        reading = read_spectra(name, options)
-        notes += [f"{reading.source}: {note}" for note in reading.notes]
-        for spectrum in reading.spectra:
-            if spectrum.id in seen:
-                first_name, first_source = seen[spectrum.id]
-                # files of one name in two folders are told apart by their paths
-                here, there = (reading.source, first_source) if reading.source != first_source else (name, first_name)
-                raise InputError.single("duplicate-id", here, f"{spectrum.id!r} is in {there} already", "rename one of the samples")
-            seen[spectrum.id] = (name, reading.source)
-        spectra += reading.spectra
-    return spectra, notes
-
-
-def _with_cells(spectra: list[Spectrum], samples: Path | None, *values: float | None) -> list[Spectrum]:
-    """The bench sheet, then what holds for every spectrum; both for one value would be a contradiction."""
-    from dataclasses import replace
-
-    from tinctor.errors import InputError
-    from tinctor.files import apply_sample_sheet, read_sample_sheet
-
-    names = ("path_length_cm", "path_length_u_cm", "dilution_factor", "dilution_factor_u")
-    given: dict[str, Any] = {name: value for name, value in zip(names, values, strict=True) if value is not None}
-    if samples is not None:
-        sheet = read_sample_sheet(samples)
-        twice = sorted({key for row in sheet.values() for key in row} & given.keys())
-        if twice:
-            raise InputError.single("given-twice", str(samples), f"{twice[0]} stands on the sheet and is given as an option too")
-        spectra = apply_sample_sheet(spectra, sheet)
-    if not given:
-        return spectra
-    changed = []
-    for spectrum in spectra:
-        try:
-            changed.append(replace(spectrum, **given))
-        except InputError as error:
-            places = [replace(f, path="--" + f.path.lstrip(".").replace("_", "-")) for f in error.faults]
-            raise InputError(places) from error
-    return changed
-
-
-def _with_blank(spectra: list[Spectrum], blank: str | None, options: ReadOptions) -> list[Spectrum]:
-    if blank is None:
-        return spectra
-    from tinctor.errors import InputError
-    from tinctor.spectrum import SpectrumBatch
-
-    found = _blank(blank, options)
-    if len(found) != 1:
-        raise InputError.single("one-blank", blank, f"expected one blank spectrum, found {len(found)}")
-    changed = []
-    for spectrum in spectra:
-        try:
-            changed.append(SpectrumBatch.of([spectrum]).minus_blank(found[0])[0])
-        except InputError as error:
-            hint = "measure the blank at the wavelengths of the samples"
-            raise InputError.single("blank", f"--blank {blank}", error.faults[0].message, hint) from error
-    return changed
-
-
-def _blank(blank: str, options: ReadOptions) -> tuple[Spectrum, ...]:
-    """The blank as its file shows it (its layout need not be the samples'); the options settle what that leaves open."""
-    from tinctor.errors import InputError
-    from tinctor.files import read_spectra
-
-    try:
-        return read_spectra(blank).spectra
-    except InputError as error:
-        if error.faults[0].code != "ambiguous":
-            raise
-    return read_spectra(blank, options).spectra
-
-
-def _document(spectrum: Spectrum) -> dict[str, Any]:
-    from tinctor.operations.shared import SpectrumIn
-
-    return SpectrumIn.of(spectrum).model_dump(exclude_none=True)
-
-
 def _background(terms: list[str] | None) -> list[str] | None:
     if terms is None:
         return None
@@ -271,15 +181,6 @@ def _wavelengths(text: str | None) -> list[float] | None:
         return [float(part) for part in text.split(",")]
     except ValueError as error:
         raise typer.BadParameter(f"expected numbers separated by commas, found {text!r}", param_hint="--wavelengths-nm") from error
-
-
-def _given(**values: Any) -> dict[str, Any]:
-    return {key: value for key, value in values.items() if value is not None}
-
-
-def _say(lines: Iterable[str]) -> None:
-    for line in lines:
-        typer.echo(line, err=True)
 
 
 def _cautions(response: ResolveResponse) -> list[str]:

@@ -81,6 +81,8 @@ class RecordFile(_Part):
     analyte: str | None = None
     caution: str = ""
     invented: bool = False
+    parent: str | None = None
+    operator: str | None = None
     conditions: ConditionsPart = ConditionsPart()
     linear_range: LinearRangePart | None = None
     source: SourcePart

@@ -17,7 +17,13 @@ from tinctor.operations.shared import RequestModel, ResponseModel
 __all__ = ["OPERATIONS", "Operation", "dumped", "operation", "run_checked", "run_document"]
 
 #: Operations by name, with the module that holds each: loaded when it is used.
-OPERATIONS: Final[dict[str, str]] = {"resolve": "tinctor.operations.resolve"}
+OPERATIONS: Final[dict[str, str]] = {
+    "determine": "tinctor.operations.determine",
+    "mixtures": "tinctor.operations.mixtures",
+    "resolve": "tinctor.operations.resolve",
+    "standards": "tinctor.operations.standards",
+    "transfer": "tinctor.operations.transfer",
+}
 
 
 @dataclass(frozen=True, slots=True)

@@ -40,6 +40,7 @@ def record_lines(record: Record) -> list[str]:
         f"  scale            {100 * file.scale_relative_u:g} % standard uncertainty. {file.scale_relative_u_reason}",
         f"  conditions       {'; '.join(f'{key} {value}' for key, value in known.items()) or 'not stated'}",
     ]
+    lines += [f"  {key:<16} {value}" for key, value in (("parent", file.parent), ("operator", file.operator)) if value]
     if file.linear_range:
         lines.append(f"  linear range     to {file.linear_range.linear_to:g} (concentration x path). {file.linear_range.reason}")
     lines += [

@@ -10,7 +10,7 @@ from tinctor.arrays import FloatArray, quoted
 from tinctor.errors import InputError
 from tinctor.standards.distributions import t_tail_two_sided
 from tinctor.standards.line import Lines
-from tinctor.standards.linearity import LinearityTest, Outlier, find_outliers, tested_ranges
+from tinctor.standards.linearity import ROUNDING, LinearityTest, Outlier, find_outliers, tested_ranges
 from tinctor.standards.notes import Dropped, Note, dropped_for_range, notes_of
 from tinctor.standards.score import Scores, fitted_lines, scored
 from tinctor.standards.series import Series, points_of
@@ -194,7 +194,8 @@ def _intercept(series: Series, settings: StandardsSettings) -> tuple[bool, Inter
     u = float(line.intercept_u[0])
     t = float(line.intercept[0]) / u if u > 0 else 0.0
     probability = float(t_tail_two_sided(t, degrees))
-    fitted = settings.intercept == "fitted" or probability < settings.significance
+    there = abs(float(line.intercept[0])) > ROUNDING * float(points.amount.max())
+    fitted = settings.intercept == "fitted" or (probability < settings.significance and there)
     return not fitted, InterceptTest(fitted, float(line.intercept[0]), t, probability)
 
 

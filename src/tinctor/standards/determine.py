@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import Final
 
 import numpy as np
 
@@ -22,9 +21,6 @@ from tinctor.standards.settings import StandardsSettings
 
 __all__ = ["Addition", "Determination", "Unknown", "determine", "determine_by_addition"]
 
-#: An unknown this far outside the standards, as a share of their range, is within it: rounding of the last dilution.
-RANGE_SLACK: Final = 1e-9
-
 
 @dataclass(frozen=True, slots=True)
 class Unknown:
@@ -40,7 +36,7 @@ class Unknown:
     interval_line, interval_approximate
         Of the line alone, exact (Fieller) and approximate, in the original sample.
     outside : float
-        How far outside the standards' range, as a share of it; 0 inside.
+        How far outside the standards' range, as a share of it; 0 inside and up to one standard uncertainty beyond.
     replicate_sd : float or None
         Of the concentration between replicates.
     refused : str
@@ -163,8 +159,9 @@ def determine(
     0.025
     """
     settings = settings or StandardsSettings()
-    result = characterise(series, settings)
-    signals = _Signals(result, settings, _column(result, wavelength_nm))
+    chosen = series if wavelength_nm is None else series.on(_only(series, wavelength_nm))
+    result = characterise(chosen, settings)
+    signals = _Signals(result, settings, None if wavelength_nm is None else 0)
     line = signals.line()
     kept = np.isin(series.wavelength_nm, result.wavelength_nm)
     limits = _limits(line, signals, series, kept, alpha)
@@ -205,26 +202,22 @@ def determine_by_addition(
     if blanks:
         blank = np.mean([b.absorbance for b in blanks], axis=0)
         series = replace(series, absorbance=series.absorbance - blank, blanks=series.blanks - blank)
-    result = characterise(series, settings)
-    line = _Signals(result, settings, _column(result, wavelength_nm)).line()
+    result = characterise(series if wavelength_nm is None else series.on(_only(series, wavelength_nm)), settings)
+    line = _Signals(result, settings, None if wavelength_nm is None else 0).line()
     found = standard_addition(line, coverage)
     stock = abs(found.x) * math.hypot(settings.stock_relative_u or 0.0, settings.path_length_relative_u)
     interval = _widened(found, line, stock, coverage)
     return Addition(result, wavelength_nm, line, found, math.hypot(found.u, stock), interval)
 
 
-def _column(result: Characterisation, wavelength_nm: float | None) -> int | None:
-    if wavelength_nm is None:
-        return None
-    k = int(np.argmin(np.abs(result.wavelength_nm - wavelength_nm)))
-    if abs(result.wavelength_nm[k] - wavelength_nm) > SAME_WAVELENGTH_NM:
-        raise InputError.single(
-            "wavelength-not-measured",
-            ".wavelength_nm",
-            f"{wavelength_nm:g} nm was asked for and is not among the wavelengths that can be used; the nearest is "
-            f"{result.wavelength_nm[k]:g} nm",
-        )
-    return k
+def _only(series: Series, wavelength_nm: float) -> np.ndarray:
+    """Bools (m,), true at one wavelength: everything is tested and read there and nowhere else."""
+    distance = np.abs(series.wavelength_nm - wavelength_nm)
+    if distance.min() > SAME_WAVELENGTH_NM:
+        nearest = series.wavelength_nm[int(distance.argmin())]
+        message = f"{wavelength_nm:g} nm was asked for and not measured; the nearest reading is at {nearest:g} nm"
+        raise InputError.single("wavelength-not-measured", ".wavelength_nm", message)
+    return np.asarray(distance <= SAME_WAVELENGTH_NM)
 
 
 def _unit_sd(weight: FloatArray, variance: FloatArray) -> float:
@@ -265,9 +258,11 @@ def _unknown(
         + (first.path_length_u_cm / first.path_length_cm) ** 2
         + (first.dilution_factor_u / first.dilution_factor) ** 2
     )
-    outside = max(line.low - found.x, found.x - line.high, 0.0) / (line.high - line.low or line.high)
+    # less than its standard uncertainty beyond the last standard is at the last standard
+    outside = max(line.low - found.x, found.x - line.high, 0.0)
+    outside = outside / (line.high - line.low or line.high) if outside > found.u else 0.0
     refused = ""
-    if outside > RANGE_SLACK and not extrapolate:
+    if outside > 0 and not extrapolate:
         side = "above" if found.x > line.high else "below"
         refused = f"{100 * outside:.3g} % of the standards' range {side} it: dilute or add a standard, or ask for extrapolation"
     shown = not refused
@@ -281,7 +276,7 @@ def _unknown(
         interval=_scaled(widened, factor) if shown and widened else None,
         interval_line=_scaled(found.exact, factor) if shown and found.exact else None,
         interval_approximate=_scaled(found.approximate, factor) if shown else None,
-        outside=outside if outside > RANGE_SLACK else 0.0,
+        outside=outside,
         replicate_sd=float(np.std(values, ddof=1)) / abs(line.slope) * factor if len(group) > 1 and shown else None,
         below_decision=found.x < decision,
         refused=refused,

@@ -15,10 +15,21 @@ from tinctor.arrays import FloatArray
 from tinctor.standards.distributions import f_tail, t_quantile
 from tinctor.standards.line import linear_model
 
-__all__ = ["LinearityTest", "Outlier", "find_outliers", "lack_of_fit", "linearity_test", "quadratic_term", "tested_ranges"]
+__all__ = [
+    "ROUNDING",
+    "LinearityTest",
+    "Outlier",
+    "find_outliers",
+    "lack_of_fit",
+    "linearity_test",
+    "quadratic_term",
+    "tested_ranges",
+]
 
 #: Degrees of freedom that replicate preparations must give before lack of fit is tested against them.
 LEAST_PURE_ERROR = 2
+#: Departures of this size are those of the last decimals: data without scatter would fail every test on them.
+ROUNDING = 1e-9
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,7 +117,7 @@ def linearity_test(
     else:
         return LinearityTest("none", float(x.max()), x.size, None, None, None, departure, False)
     probability = float(f_tail(f, between, within))
-    passed = probability >= significance or departure <= allowed
+    passed = probability >= significance or departure <= max(allowed, ROUNDING)
     return LinearityTest(method, float(x.max()), x.size, f, (between, within), probability, departure, passed)
 
 
@@ -144,6 +155,8 @@ def find_outliers(
     if x.size < k + 2:
         return ()
     model = linear_model((x[:, None] / x.max()) ** np.array(powers, dtype=np.float64), y, weight)
+    if model.squares <= ROUNDING**2 * float(weight @ y**2):
+        return ()
     squares = weight * model.residual**2
     free = np.maximum(1.0 - model.leverage, 1e-9)
     without = np.maximum(model.squares - squares / free, 0.0) / (x.size - k - 1)
