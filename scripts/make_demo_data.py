@@ -276,11 +276,46 @@ def request(bath: Bath, A: np.ndarray) -> str:
     return json.dumps(document, indent=1) + "\n"
 
 
+#: A new lot of Tarn Blue, weighed: mg/L in the cell; the last one aggregates.
+SERIES_MG_PER_L = (4.0, 8.0, 12.0, 18.0, 24.0, 32.0, 44.0)
+UNKNOWNS_MG_PER_L = {"vat7-start": 21.37, "vat7-end": 2.94, "vat7-strong": 41.0}
+LOT_STRENGTH, STOCK_RELATIVE_U = 0.947, 0.004
+
+
+def filling(milligrams_per_litre: float, rng: np.random.Generator) -> np.ndarray:
+    """Return one filling of the cell with the new lot: aggregation above 35 mg/L, cell, noise, stray light."""
+    w = INSTRUMENT_NM + rng.normal(0, 0.02)
+    A = LOT_STRENGTH * BY_NAME["tarn-blue"].absorptivity(w) * milligrams_per_litre / 1000.0
+    aggregated = 0.06 if milligrams_per_litre > 35 else 0.0
+    A = A * (1 - aggregated) + aggregated * A.max() * np.exp(-4 * np.log(2) * ((w - 560) / 40) ** 2) + rng.normal(0, 0.001)
+    transmittance = (10.0**-A + STRAY_LIGHT) / (1 + STRAY_LIGHT) + rng.normal(0, NOISE_TRANSMITTANCE, A.size)
+    return np.round(-np.log10(transmittance) + rng.normal(0, NOISE_FLOOR, A.size), 4)
+
+
+def series_files(rng: np.random.Generator) -> dict[str, str]:
+    """Return the files of the weighed series and its unknowns."""
+    stock = 1 + rng.normal(0, STOCK_RELATIVE_U)
+    true = {f"s{k + 1}": c * stock * (1 + rng.normal(0, 0.002)) for k, c in enumerate(SERIES_MG_PER_L)}
+    scans = {"blank": filling(0.0, rng), **{i: filling(c, rng) for i, c in true.items()}, "s3-again": filling(true["s3"], rng)}
+    sheet = Table([["id", "concentration", "concentration_u", "replicate_of"], ["blank", "0", "", ""]])
+    for k, c in enumerate(SERIES_MG_PER_L):
+        sheet.rows.append([f"s{k + 1}", f"{c:g}", f"{0.002 * c:.4f}", ""])
+    sheet.rows.append(["s3-again", f"{SERIES_MG_PER_L[2]:g}", "", "s3"])
+    unknowns = {i: filling(c, rng) for i, c in UNKNOWNS_MG_PER_L.items()}
+    return {"standards.csv": spectra_text(scans), "standards-sheet.csv": sheet.text(), "unknowns.csv": spectra_text(unknowns)}
+
+
+def spectra_text(spectra: dict[str, np.ndarray]) -> str:
+    table = Table([["wavelength_nm", *spectra]])
+    table.rows += [[f"{w:.0f}", *(f"{A[k]:.4f}" for A in spectra.values())] for k, w in enumerate(INSTRUMENT_NM)]
+    return table.text()
+
+
 def build() -> dict[Path, str]:
     """Return every file by path."""
     rng = np.random.default_rng(SEED)
     library, scale = records(rng)
-    samples = sample_files(scale, rng)
+    samples = {**sample_files(scale, rng), **series_files(np.random.default_rng(SEED + 1))}
     return {**{LIBRARY / name: text for name, text in library.items()}, **{SAMPLES / name: text for name, text in samples.items()}}
 
 

@@ -146,6 +146,7 @@ def run(request: DetermineRequest) -> DetermineResponse:
                         wavelength_nm=request.wavelength_nm,
                         coverage=request.coverage,
                         extrapolate=request.extrapolate,
+                        absorbance_limit=request.absorbance_limit,
                         alpha=request.alpha,
                     ),
                 )
@@ -269,10 +270,16 @@ def _unknown_out(u: Unknown, determination: Determination, unit: str, factor: fl
 def _unknown_flags(u: Unknown, determination: Determination) -> list[NoteOut]:
     flags = []
     if u.refused:
-        flags.append(NoteOut(code="outside-standards-range", severity="warning", message=u.refused))
+        flags.append(NoteOut(code=u.refused_code, severity="warning", message=u.refused))
     elif u.outside > 0:
         message = f"{100 * u.outside:.3g} % of the standards' range outside it: the line was not shown to hold there"
         flags.append(NoteOut(code="outside-standards-range", severity="warning", message=message))
+    if u.departure is not None:
+        message = (
+            f"its spectrum has not the standards' shape: {1000 * u.departure[1]:+.1f} mAU at {u.departure[0]:g} nm; "
+            "another absorber, aggregation or turbidity may bias it"
+        )
+        flags.append(NoteOut(code="unmodelled-absorber", severity="warning", message=message, wavelength_nm=[u.departure[0]]))
     if u.below_decision:
         message = f"below the decision limit ({determination.limits[0].definition}): not shown to be there"
         flags.append(NoteOut(code="below-decision-limit", severity="info", message=message))

@@ -1,4 +1,4 @@
-"""Unknowns of one substance as they come in: replicates together, on the standards' axis, within the absorbance limit."""
+"""Unknowns of one substance as they come in: replicates together, on the standards' axis."""
 
 from __future__ import annotations
 
@@ -29,7 +29,7 @@ def unknown_groups(request: DetermineRequest) -> list[list[Spectrum]]:
     Raises
     ------
     InputError
-        Listing every fault with its JSON path: another axis, replicates of nothing or in another cell, saturated readings.
+        Listing every fault with its JSON path: another axis, replicates of nothing or in another cell.
     """
     if not request.unknowns:
         raise InputError.single("no-unknowns", "$.unknowns", "expected at least one unknown, found none")
@@ -38,9 +38,6 @@ def unknown_groups(request: DetermineRequest) -> list[list[Spectrum]]:
     faults = same_axis([("$.standards[0]", first), *((f"$.unknowns[{k}]", s) for k, s in enumerate(spectra))])
     groups, of_groups = _together(request.unknowns, spectra)
     faults += of_groups
-    if not faults:
-        inside = _wanted(first.wavelength_nm, request)
-        faults += [f for k, s in enumerate(spectra) for f in _saturated(s, inside, request.absorbance_limit, f"$.unknowns[{k}]")]
     if faults:
         raise InputError(faults)
     kept = _in_range(first.wavelength_nm, request)
@@ -75,24 +72,6 @@ def _in_range(axis_nm: np.ndarray, request: DetermineRequest) -> np.ndarray:
     low, high = request.wavelength_range_nm or (axis_nm[0], axis_nm[-1])
     kept: np.ndarray = (axis_nm >= low - SAME_WAVELENGTH_NM) & (axis_nm <= high + SAME_WAVELENGTH_NM)
     return kept
-
-
-def _wanted(axis_nm: np.ndarray, request: DetermineRequest) -> np.ndarray:
-    """The readings that are looked at: one, or those in the range."""
-    if request.wavelength_nm is None:
-        return _in_range(axis_nm, request)
-    wanted: np.ndarray = np.abs(axis_nm - request.wavelength_nm) <= SAME_WAVELENGTH_NM
-    return wanted
-
-
-def _saturated(s: Spectrum, inside: np.ndarray, limit: float, path: str) -> list[Fault]:
-    above = np.flatnonzero(inside & (s.absorbance > limit))
-    if not above.size:
-        return []
-    k = int(above[np.argmax(s.absorbance[above])])
-    message = f"{s.id!r} reads {s.absorbance[k]:.3g} at {s.wavelength_nm[k]:g} nm, above the absorbance limit {limit:g}"
-    hint = "dilute it, or read elsewhere (wavelength_nm, wavelength_range_nm)"
-    return [Fault("saturated", f"{path}.absorbance[{k}]", message, hint)]
 
 
 def _cut(s: Spectrum, kept: np.ndarray) -> Spectrum:

@@ -39,7 +39,9 @@ class Unknown:
         How far outside the standards' range, as a share of it; 0 inside and up to one standard uncertainty beyond.
     replicate_sd : float or None
         Of the concentration between replicates.
-    refused : str
+    departure : (wavelength_nm, absorbance) or None
+        Where a spectrum departs most from the standards' shape, when it does so beyond noise and model error.
+    refused, refused_code : str
         Why there is no figure; empty where there is one.
     """
 
@@ -54,7 +56,9 @@ class Unknown:
     outside: float
     replicate_sd: float | None
     below_decision: bool
+    departure: tuple[float, float] | None
     refused: str
+    refused_code: str
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -87,6 +91,7 @@ class _Signals:
     result: Characterisation
     settings: StandardsSettings
     column: int | None
+    limit: float = 2.0
 
     def line(self) -> CalibrationLine:
         x = self.result.points.amount
@@ -103,6 +108,23 @@ class _Signals:
             return np.asarray(A[:, self.column])
         shape = np.nan_to_num(self.result.lines.slope)
         return np.asarray(A @ shape / (shape @ shape))
+
+    def departure(self, absorbance: FloatArray, replicates: int) -> tuple[float, float] | None:
+        """Return where a mean spectrum (m,) departs most from its share of the mean shape, beyond the Bonferroni limit."""
+        if self.column is not None:
+            return None
+        settings, lines, points = self.settings, self.result.lines, self.result.points
+        signal = float(self.of(absorbance[None, :])[0]) - float(self.result.scores.line.intercept[0])
+        own = absorbance - (points.blanks.mean(axis=0) if len(points.blanks) else 0.0) - lines.intercept
+        fitted = signal * np.nan_to_num(lines.slope)
+        noise = settings.noise.reading_variance(np.minimum(np.abs(fitted), 10.0)) / replicates
+        blank = float(settings.noise.reading_variance(0.0)) / max(len(points.blanks), 1) if len(points.blanks) else 0.0
+        model = settings.model_error_absorbance**2 + (settings.model_error_relative * fitted) ** 2
+        record = (signal * self.result.spread.absorptivity_u) ** 2
+        limit = normal_quantile(1.0 - settings.significance / (2.0 * own.size)) * np.sqrt(noise + blank + model + record)
+        excess = np.abs(own - fitted) / limit
+        k = int(excess.argmax())
+        return (float(self.result.wavelength_nm[k]), float((own - fitted)[k])) if excess[k] > 1.0 else None
 
     def variance_ratio(self, signal: float) -> float:
         """Variance of a reading of an unknown against that of a signal of weight 1: noise and cell, no dilution."""
@@ -134,6 +156,7 @@ def determine(
     coverage: float = 0.95,
     extrapolate: bool = False,
     alpha: float = 0.05,
+    absorbance_limit: float = 2.0,
 ) -> Determination:
     """Return the concentration of each unknown.
 
@@ -145,6 +168,8 @@ def determine(
         Where to read; the whole spectrum when left out.
     extrapolate
         Give a figure outside the standards' range too.
+    absorbance_limit
+        An unknown that reads above it at a wavelength used is refused.
 
     Raises
     ------
@@ -161,7 +186,7 @@ def determine(
     settings = settings or StandardsSettings()
     chosen = series if wavelength_nm is None else series.on(_only(series, wavelength_nm))
     result = characterise(chosen, settings)
-    signals = _Signals(result, settings, None if wavelength_nm is None else 0)
+    signals = _Signals(result, settings, None if wavelength_nm is None else 0, absorbance_limit)
     line = signals.line()
     kept = np.isin(series.wavelength_nm, result.wavelength_nm)
     limits = _limits(line, signals, series, kept, alpha)
@@ -261,10 +286,7 @@ def _unknown(
     # less than its standard uncertainty beyond the last standard is at the last standard
     outside = max(line.low - found.x, found.x - line.high, 0.0)
     outside = outside / (line.high - line.low or line.high) if outside > found.u else 0.0
-    refused = ""
-    if outside > 0 and not extrapolate:
-        side = "above" if found.x > line.high else "below"
-        refused = f"{100 * outside:.3g} % of the standards' range {side} it: dilute or add a standard, or ask for extrapolation"
+    refused, code = _refusal(group, kept, signals, found, line, outside, extrapolate=extrapolate)
     shown = not refused
     widened = _widened(found, line, relative * found.x, coverage)
     return Unknown(
@@ -279,8 +301,34 @@ def _unknown(
         outside=outside,
         replicate_sd=float(np.std(values, ddof=1)) / abs(line.slope) * factor if len(group) > 1 and shown else None,
         below_decision=found.x < decision,
+        departure=signals.departure(np.stack([s.absorbance[kept] for s in group]).mean(axis=0), len(group)),
         refused=refused,
+        refused_code=code,
     )
+
+
+def _refusal(
+    group: list[Spectrum],
+    kept: np.ndarray,
+    signals: _Signals,
+    found: Inverse,
+    line: CalibrationLine,
+    outside: float,
+    *,
+    extrapolate: bool,
+) -> tuple[str, str]:
+    """Why an unknown has no figure, and the code of the reason; empty where it has one."""
+    for s in group:
+        readings = s.absorbance[kept]
+        if readings.max() > signals.limit:
+            at = s.wavelength_nm[kept][int(readings.argmax())]
+            message = f"{s.id!r} reads {readings.max():.3g} at {at:g} nm, above the absorbance limit {signals.limit:g}: dilute it"
+            return message, "saturated"
+    if outside > 0 and not extrapolate:
+        side = "above" if found.x > line.high else "below"
+        message = f"{100 * outside:.3g} % of the standards' range {side} it: dilute or add a standard, or ask for extrapolation"
+        return message, "outside-standards-range"
+    return "", ""
 
 
 def _widened(found: Inverse, line: CalibrationLine, u: float, coverage: float) -> tuple[float, float] | None:

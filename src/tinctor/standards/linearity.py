@@ -28,6 +28,8 @@ __all__ = [
 
 #: Degrees of freedom that replicate preparations must give before lack of fit is tested against them.
 LEAST_PURE_ERROR = 2
+#: Levels below this share of the highest say little about how straight a line is.
+LEAST_SHARE = 0.1
 #: Departures of this size are those of the last decimals: data without scatter would fail every test on them.
 ROUNDING = 1e-9
 
@@ -45,7 +47,8 @@ class LinearityTest:
     points, f, degrees_of_freedom, probability
         Preparations in the set; F, its two degrees of freedom and the probability of such an F or more when the line holds.
     departure_relative
-        Largest distance of a level's mean from the line, as a share of the line there.
+        Largest distance of a level's mean from the line, as a share of the line there; levels below a tenth of the highest
+        are left out, where any offset is a large share.
     passed
         Whether the line is accepted.
     """
@@ -190,6 +193,6 @@ def _departure(x: FloatArray, y: FloatArray, weight: FloatArray, level: np.ndarr
     departures = [
         abs(float(np.average(y[at] - line[at], weights=weight[at]))) / float(np.abs(line[at]).mean())
         for at in (level == k for k in range(level.max() + 1))
-        if x[at][0] > 0
+        if x[at][0] >= LEAST_SHARE * x.max()
     ]
     return max(departures, default=0.0)

@@ -38,6 +38,10 @@ class Note:
     wavelength_nm: tuple[float, ...] = ()
 
 
+#: A level this far off the line is no matter of pipettes (common practice).
+LARGE_SCATTER = 0.05
+
+
 def dropped_for_range(points: Series, linear_to: float, linear: float | None) -> list[Dropped]:
     """Return the standards above the range that passed, each with the test that it did not."""
     return [
@@ -116,8 +120,16 @@ def _range_notes(result: Characterisation) -> Iterator[Note]:
 
 
 def _standard_notes(result: Characterisation) -> Iterator[Note]:
+    whole = result.tests[0]
+    if whole.passed and whole.departure_relative > LARGE_SCATTER and not result.points.declared:
+        message = (
+            f"the standards lie up to {100 * whole.departure_relative:.2g} % off the line, and so much scatter hides any curvature: "
+            "look for exchanged labels and for faults of dilution"
+        )
+        yield Note("standards-scatter", "warning", message)
+    dropped = {d.id for d in result.dropped}
     for m in result.marked:
-        what = "left out" if m.left_out else "kept: leave it out by name, or by the rule"
+        what = "left out" if m.id in dropped else "kept: leave it out by name, or by the rule"
         message = f"{m.id!r} is off the curve of the others: studentised residual {m.studentised:.1f} against {m.limit:.1f}; {what}"
         yield Note("standard-off-the-curve", "warning", message, (m.id,))
     if result.intercept.fitted and (result.intercept.probability or 1.0) < 0.05:
