@@ -73,7 +73,7 @@ def test_mixtures_with_wrong_labels_are_named(metals: tuple[np.ndarray, np.ndarr
     error_right = np.sqrt(((right.absorptivity - pure) ** 2).mean(axis=1)) / size
     error_wrong = np.sqrt(((wrong.absorptivity - pure) ** 2).mean(axis=1)) / size
     assert error_right.max() < 0.07  # 2.2 to 5.8 %: the teaching spectrometer
-    assert error_wrong.max() > 3 * error_right.max()
+    assert error_wrong.max() > 2 * error_right.max()
     assert wrong.residual_sd.max() > 2 * right.residual_sd.max()
     # one wrong label among right ones is named, and nothing else is
     one = corrected[20:].copy()

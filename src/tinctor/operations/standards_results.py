@@ -52,7 +52,7 @@ class ComponentOut(ResponseModel):
 class LinearityTestOut(ResponseModel):
     """One test of one set of standards."""
 
-    method: Literal["lack-of-fit", "quadratic-term", "none"]
+    method: Literal["lack-of-fit", "quadratic-term", "highest-level", "none"]
     highest: float = Field(description="highest concentration times path of the set, mol L-1 cm or g L-1 cm")
     points: int
     f: float | None

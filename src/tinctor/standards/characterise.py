@@ -106,9 +106,32 @@ def characterise(series: Series, settings: StandardsSettings | None = None) -> C
     settings = settings or StandardsSettings()
     kept, dropped = _without(series, settings.leave_out, "left out by the user's word")
     kept, hidden = _with_readings(kept)
-    through_zero, intercept = _intercept(kept, settings)
+    through_zero, _ = _intercept(kept, settings)
+    found = _found(kept, settings, [*dropped, *hidden], through_zero=through_zero)
+    again, intercept = _intercept(found.kept, settings)
+    if again != through_zero:
+        # what was left out made the intercept, or hid it: decide anew without it
+        found = _found(kept, settings, [*dropped, *hidden], through_zero=again)
+    return _finished(found, intercept, series, settings)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Found:
+    """The standards that remain, without blanks, and what was decided on the way."""
+
+    kept: Series
+    linear_to: float | None
+    tests: tuple[LinearityTest, ...]
+    marked: tuple[MarkedStandard, ...]
+    shape: Superposition
+    dropped: tuple[Dropped, ...]
+    through_zero: bool
+
+
+def _found(kept: Series, settings: StandardsSettings, dropped: list[Dropped], *, through_zero: bool) -> _Found:
+    """Screen for bad standards, find the linear range and that of one shape, and keep what lies in both."""
     kept, marked = _screened(kept, settings, through_zero=through_zero)
-    dropped += hidden + [Dropped(m.id, "off the curve of the others, left out by rule") for m in marked if m.left_out]
+    dropped = dropped + [Dropped(m.id, "off the curve of the others, left out by rule") for m in marked if m.left_out]
     points = points_of(kept, through_zero=through_zero)
     scores, _ = scored(points, fitted_lines(points, settings, through_zero=through_zero), settings)
     tests = tested_ranges(
@@ -120,12 +143,18 @@ def characterise(series: Series, settings: StandardsSettings | None = None) -> C
         allowed=settings.allowed_nonlinearity,
     )
     linear = tests[-1].amount if tests[-1].passed else None
-    within = points if linear is None else points.take(np.flatnonzero(points.amount <= linear))
-    shape = superposition(within, settings, through_zero=through_zero)
+    shape = superposition(points, settings, through_zero=through_zero)
     linear_to = None if linear is None or shape.holds_to is None else min(linear, shape.holds_to)
     if linear_to is not None:
         dropped += dropped_for_range(points, linear_to, linear)
-        points = points.take(np.flatnonzero(points.amount <= linear_to))
+        kept = kept.take(np.flatnonzero(kept.amount <= linear_to))
+    return _Found(kept, linear_to, tests, marked, shape, tuple(dropped), through_zero)
+
+
+def _finished(found: _Found, intercept: InterceptTest, series: Series, settings: StandardsSettings) -> Characterisation:
+    """Fit what was kept."""
+    through_zero = found.through_zero
+    points = points_of(found.kept, through_zero=through_zero)
     points = points.on(points.used.any(axis=0) & (points.amount[:, None] * points.used).any(axis=0))
     lines = fitted_lines(points, settings, through_zero=through_zero)
     scores, _ = scored(points, lines, settings)
@@ -135,12 +164,12 @@ def characterise(series: Series, settings: StandardsSettings | None = None) -> C
         points=points,
         scores=scores,
         spread=spread_of(points, lines, scores, settings),
-        linear_to=linear_to,
-        tests=tests,
-        marked=marked,
-        shape=shape,
-        intercept=intercept,
-        dropped=tuple(dropped),
+        linear_to=found.linear_to,
+        tests=found.tests,
+        marked=found.marked,
+        shape=found.shape,
+        intercept=replace(intercept, fitted=not through_zero),
+        dropped=found.dropped,
         notes=(),
     )
     return replace(result, notes=notes_of(result, series, settings))

@@ -6,7 +6,7 @@ quadratic term of Mandel (The Statistical Analysis of Experimental Data, 1964), 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -30,6 +30,8 @@ __all__ = [
 LEAST_PURE_ERROR = 2
 #: Levels below this share of the highest say little about how straight a line is.
 LEAST_SHARE = 0.1
+#: Share of the significance level that goes to the highest level alone: a sudden bend hides from the quadratic term.
+HIGHEST_LEVEL_SHARE = 0.2
 #: Departures of this size are those of the last decimals: data without scatter would fail every test on them.
 ROUNDING = 1e-9
 
@@ -41,7 +43,8 @@ class LinearityTest:
     Attributes
     ----------
     method
-        "lack-of-fit", "quadratic-term", or "none" where the standards are too few.
+        "lack-of-fit", "quadratic-term", "highest-level" (passed either, and its highest level is off the curve of the others:
+        a sudden bend hides from the quadratic term), or "none" where the standards are too few.
     amount
         Highest concentration times path of the set.
     points, f, degrees_of_freedom, probability
@@ -53,7 +56,7 @@ class LinearityTest:
         Whether the line is accepted.
     """
 
-    method: Literal["lack-of-fit", "quadratic-term", "none"]
+    method: Literal["lack-of-fit", "quadratic-term", "highest-level", "none"]
     amount: float
     points: int
     f: float | None
@@ -65,12 +68,13 @@ class LinearityTest:
 
 @dataclass(frozen=True, slots=True)
 class Outlier:
-    """A preparation that lies off the curve of the others: place in the series, studentised residual, limit, leverage."""
+    """A preparation off the curve of the others: place in the series, studentised residual with its degrees of freedom, limit."""
 
     row: int
     studentised: float
     limit: float
     leverage: float
+    degrees_of_freedom: int
 
 
 def quadratic_term(x: FloatArray, y: FloatArray, weight: FloatArray, *, through_zero: bool) -> tuple[float, int, int]:
@@ -134,13 +138,34 @@ def tested_ranges(
     tests: list[LinearityTest] = []
     for top in np.unique(x)[::-1]:
         rows = x <= top
-        test = linearity_test(x[rows], y[rows], weight[rows], through_zero=through_zero, significance=significance, allowed=allowed)
+        test = _one_range(x[rows], y[rows], weight[rows], through_zero=through_zero, significance=significance, allowed=allowed)
         if test.method == "none" and tests:
             break
         tests.append(test)
         if test.passed or test.method == "none":
             break
     return tuple(tests)
+
+
+def _one_range(
+    x: FloatArray, y: FloatArray, weight: FloatArray, *, through_zero: bool, significance: float, allowed: float
+) -> LinearityTest:
+    """Test one set. Where its highest level is one preparation, the level of significance is shared with a test of that."""
+    alone = int((x == x.max()).sum()) == 1
+    share = 1.0 - HIGHEST_LEVEL_SHARE if alone else 1.0
+    test = linearity_test(x, y, weight, through_zero=through_zero, significance=share * significance, allowed=allowed)
+    if not (alone and test.passed and test.departure_relative > max(allowed, ROUNDING)):
+        return test
+    top = next((o for o in _studentised(x, y, weight, through_zero=through_zero) if x[o.row] == x.max()), None)
+    if top is None:
+        return test
+    probability = float(f_tail(top.studentised**2, 1, top.degrees_of_freedom))
+    if probability >= HIGHEST_LEVEL_SHARE * significance:
+        return test
+    freedom = (1, top.degrees_of_freedom)
+    return replace(
+        test, method="highest-level", f=top.studentised**2, degrees_of_freedom=freedom, probability=probability, passed=False
+    )
 
 
 def find_outliers(
@@ -151,23 +176,32 @@ def find_outliers(
     Externally studentised residuals from a quadratic (so that curvature is not taken for a bad standard), from the line
     where there are too few points, against the Bonferroni limit of all of them.
     """
+    found = _studentised(x, y, weight, through_zero=through_zero)
+    if not found:
+        return ()
+    limit = float(t_quantile(1.0 - significance / (2.0 * x.size), float(found[0].degrees_of_freedom)))
+    return tuple(replace(o, limit=limit) for o in found if abs(o.studentised) > limit)
+
+
+def _studentised(x: FloatArray, y: FloatArray, weight: FloatArray, *, through_zero: bool) -> list[Outlier]:
+    """Externally studentised residuals of all points that have one, the largest first; the limit is left open."""
     powers = [1, 2] if through_zero else [0, 1, 2]
     if x.size < len(powers) + 2 or _levels(x).max() + 1 <= len(powers):
         powers = powers[:-1]
     k = len(powers)
     if x.size < k + 2:
-        return ()
+        return []
     model = linear_model((x[:, None] / x.max()) ** np.array(powers, dtype=np.float64), y, weight)
     if model.squares <= ROUNDING**2 * float(weight @ y**2):
-        return ()
+        return []
     squares = weight * model.residual**2
     free = np.maximum(1.0 - model.leverage, 1e-9)
-    without = np.maximum(model.squares - squares / free, 0.0) / (x.size - k - 1)
+    degrees = x.size - k - 1
+    without = np.maximum(model.squares - squares / free, 0.0) / degrees
     studentised = model.residual * np.sqrt(weight) / np.sqrt(np.maximum(without, 1e-300) * free)
-    limit = float(t_quantile(1.0 - significance / (2.0 * x.size), float(x.size - k - 1)))
     # a leverage of 1 leaves no residual to judge
-    marked = [j for j in np.argsort(-np.abs(studentised)) if abs(studentised[j]) > limit and model.leverage[j] < 1 - 1e-9]
-    return tuple(Outlier(int(j), float(studentised[j]), limit, float(model.leverage[j])) for j in marked)
+    rows = [int(j) for j in np.argsort(-np.abs(studentised)) if model.leverage[j] < 1 - 1e-9]
+    return [Outlier(j, float(studentised[j]), np.inf, float(model.leverage[j]), degrees) for j in rows]
 
 
 def _f(between_squares: float, between: int, within_squares: float, within: int) -> float:

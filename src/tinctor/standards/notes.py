@@ -123,7 +123,7 @@ def _standard_notes(result: Characterisation) -> Iterator[Note]:
     whole = result.tests[0]
     if whole.passed and whole.departure_relative > LARGE_SCATTER and not result.points.declared:
         message = (
-            f"the standards lie up to {100 * whole.departure_relative:.2g} % off the line, and so much scatter hides any curvature: "
+            f"the standards lie up to {100 * whole.departure_relative:.2g} % off the line: so much scatter hides any curvature; "
             "look for exchanged labels and for faults of dilution"
         )
         yield Note("standards-scatter", "warning", message)
