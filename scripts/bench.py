@@ -9,6 +9,8 @@
              A - C @ K.T over the same data in cache-sized chunks
     cold     `tinctor resolve` of one sample from a cold start, against `python -c "import numpy, pydantic, typer"`
     memory   peak memory that resolving adds, against the input array
+    standards a series of 50 standards by 1000 wavelengths to a record (fits, tests, superposition, uncertainties), against
+             numpy.polyfit called once for all columns, which yields the lines alone
 
 Needs what the tests need (scripts/test.py --setup-only makes the environment). Machines differ and are noisy: read the ratios.
 """
@@ -140,18 +142,44 @@ def memory(spectra: int) -> dict[str, object]:
     }
 
 
+def standards() -> dict[str, object]:
+    """Time a series against numpy.polyfit of all its columns at once."""
+    import numpy as np
+
+    from tinctor import Spectrum
+    from tinctor.standards.characterise import characterise
+    from tinctor.standards.series import Standard, series_of
+
+    rng = np.random.default_rng(1)
+    w = np.linspace(300.0, 800.0, 1000)
+    e = 40.0 * np.exp(-0.5 * ((w - 550.0) / 40.0) ** 2)
+    amounts = np.linspace(0.0005, 0.03, 50)
+    A = amounts[:, None] * e + 0.0005 * rng.normal(size=(50, 1000))
+    scans = [Standard(Spectrum(f"s{k}", w, A[k]), c, 0.002 * c) for k, c in enumerate(amounts.tolist())]
+    whole = best(lambda: characterise(series_of(scans)), 20)
+    lines = best(lambda: np.polyfit(amounts, A, 1), 20)
+    return {
+        "bench": "standards",
+        "standards": 50,
+        "wavelengths": 1000,
+        "series_ms": round(1e3 * whole, 1),
+        "series_over_polyfit": round(whole / lines, 1),
+    }
+
+
 def main() -> int:
     """Run each bench in a process of its own and print its line."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("--spectra", type=int, default=100_000, help="spectra of the batch (default 100000)")
-    parser.add_argument("--only", choices=["batch", "cold", "memory"], help="one bench")
+    parser.add_argument("--only", choices=["batch", "cold", "memory", "standards"], help="one bench")
     options = parser.parse_args()
     if os.environ.get(INSIDE):
-        result = {"batch": lambda: batch(options.spectra), "cold": cold, "memory": lambda: memory(options.spectra)}[options.only]()
+        benches = {"batch": lambda: batch(options.spectra), "cold": cold, "memory": lambda: memory(options.spectra)}
+        result = {**benches, "standards": standards}[options.only]()
         print(json.dumps(result), flush=True)
         return 0
     python = python_with_tinctor(extra="dev")
-    for name in [options.only] if options.only else ["batch", "cold", "memory"]:
+    for name in [options.only] if options.only else ["batch", "cold", "memory", "standards"]:
         command = [str(python), str(Path(__file__).resolve()), "--only", name, "--spectra", str(options.spectra)]
         subprocess.run(command, cwd=ROOT, env={**os.environ, INSIDE: "1"}, check=True)
     return 0

@@ -105,14 +105,32 @@ def characterise(series: Series, settings: StandardsSettings | None = None) -> C
     """
     settings = settings or StandardsSettings()
     kept, dropped = _without(series, settings.leave_out, "left out by the user's word")
-    kept, hidden = _with_readings(kept)
-    through_zero, _ = _intercept(kept, settings)
-    found = _found(kept, settings, [*dropped, *hidden], through_zero=through_zero)
-    again, intercept = _intercept(found.kept, settings)
+    fits = _Fits(settings)
+    kept, hidden = _with_readings(kept, fits)
+    through_zero, _ = _intercept(kept, fits)
+    found = _found(kept, fits, [*dropped, *hidden], through_zero=through_zero)
+    again, intercept = _intercept(found.kept, fits)
     if again != through_zero:
         # what was left out made the intercept, or hid it: decide anew without it
-        found = _found(kept, settings, [*dropped, *hidden], through_zero=again)
-    return _finished(found, intercept, series, settings)
+        found = _found(kept, fits, [*dropped, *hidden], through_zero=again)
+    return _finished(found, intercept, series, fits)
+
+
+class _Fits:
+    """Lines and scores of the sets of standards met on the way, each fitted once."""
+
+    def __init__(self, settings: StandardsSettings) -> None:
+        self.settings = settings
+        self._made: dict[tuple[tuple[str, ...], bool], tuple[Series, Lines, Scores, np.ndarray]] = {}
+
+    def of(self, series: Series, *, through_zero: bool) -> tuple[Series, Lines, Scores, np.ndarray]:
+        """Return points, lines, scores, and which points have a score."""
+        key = (series.ids, through_zero)
+        if key not in self._made:
+            points = points_of(series, through_zero=through_zero)
+            lines = fitted_lines(points, self.settings, through_zero=through_zero)
+            self._made[key] = (points, lines, *scored(points, lines, self.settings))
+        return self._made[key]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -128,12 +146,12 @@ class _Found:
     through_zero: bool
 
 
-def _found(kept: Series, settings: StandardsSettings, dropped: list[Dropped], *, through_zero: bool) -> _Found:
+def _found(kept: Series, fits: _Fits, dropped: list[Dropped], *, through_zero: bool) -> _Found:
     """Screen for bad standards, find the linear range and that of one shape, and keep what lies in both."""
-    kept, marked = _screened(kept, settings, through_zero=through_zero)
+    settings = fits.settings
+    kept, marked = _screened(kept, fits, through_zero=through_zero)
     dropped = dropped + [Dropped(m.id, "off the curve of the others, left out by rule") for m in marked if m.left_out]
-    points = points_of(kept, through_zero=through_zero)
-    scores, _ = scored(points, fitted_lines(points, settings, through_zero=through_zero), settings)
+    points, lines, scores, _ = fits.of(kept, through_zero=through_zero)
     tests = tested_ranges(
         scores.amount,
         scores.value,
@@ -143,7 +161,7 @@ def _found(kept: Series, settings: StandardsSettings, dropped: list[Dropped], *,
         allowed=settings.allowed_nonlinearity,
     )
     linear = tests[-1].amount if tests[-1].passed else None
-    shape = superposition(points, settings, through_zero=through_zero)
+    shape = superposition(points, lines, settings)
     linear_to = None if linear is None or shape.holds_to is None else min(linear, shape.holds_to)
     if linear_to is not None:
         dropped += dropped_for_range(points, linear_to, linear)
@@ -151,13 +169,15 @@ def _found(kept: Series, settings: StandardsSettings, dropped: list[Dropped], *,
     return _Found(kept, linear_to, tests, marked, shape, tuple(dropped), through_zero)
 
 
-def _finished(found: _Found, intercept: InterceptTest, series: Series, settings: StandardsSettings) -> Characterisation:
+def _finished(found: _Found, intercept: InterceptTest, series: Series, fits: _Fits) -> Characterisation:
     """Fit what was kept."""
-    through_zero = found.through_zero
-    points = points_of(found.kept, through_zero=through_zero)
-    points = points.on(points.used.any(axis=0) & (points.amount[:, None] * points.used).any(axis=0))
-    lines = fitted_lines(points, settings, through_zero=through_zero)
-    scores, _ = scored(points, lines, settings)
+    through_zero, settings = found.through_zero, fits.settings
+    points, lines, scores, _ = fits.of(found.kept, through_zero=through_zero)
+    shown = (points.amount[:, None] * points.used).any(axis=0)
+    if not shown.all():
+        points = points.on(shown)
+        lines = fitted_lines(points, settings, through_zero=through_zero)
+        scores, _ = scored(points, lines, settings)
     result = Characterisation(
         wavelength_nm=points.wavelength_nm,
         lines=lines,
@@ -187,7 +207,7 @@ def _without(series: Series, ids: tuple[str, ...], reason: str) -> tuple[Series,
     return series.take(rows), [Dropped(i, reason) for i in ids]
 
 
-def _with_readings(series: Series) -> tuple[Series, list[Dropped]]:
+def _with_readings(series: Series, fits: _Fits) -> tuple[Series, list[Dropped]]:
     """Leave out standards of which so much is saturated that the rest says little about the band."""
     if not series.used.any():
         raise InputError.single(
@@ -196,9 +216,9 @@ def _with_readings(series: Series) -> tuple[Series, list[Dropped]]:
             "every reading of every standard is above the absorbance limit",
             "dilute, or use a shorter cell",
         )
-    settings = StandardsSettings(intercept="zero")
-    points = points_of(series, through_zero=True)
-    _, shown = scored(points, fitted_lines(points, settings, through_zero=True), settings)
+    if series.used.all():
+        return series, []
+    _, _, _, shown = fits.of(series, through_zero=True)
     rows = np.flatnonzero(shown)
     if not rows.size:
         raise InputError.single(
@@ -208,42 +228,43 @@ def _with_readings(series: Series) -> tuple[Series, list[Dropped]]:
     return series.take(rows), [Dropped(series.ids[k], reason) for k in np.flatnonzero(~shown)]
 
 
-def _intercept(series: Series, settings: StandardsSettings) -> tuple[bool, InterceptTest]:
+def _intercept(series: Series, fits: _Fits) -> tuple[bool, InterceptTest]:
     """Whether the line goes through zero, and the test behind that."""
-    points = points_of(series, through_zero=False)
-    if settings.intercept == "zero" or np.unique(points.amount).size < 2:
+    settings = fits.settings
+    if settings.intercept == "zero" or series.levels + bool(len(series.blanks)) < 2:
         if settings.intercept == "fitted":
             message = "a fitted intercept needs two levels (a blank is one), found one"
             raise InputError.single("too-few-levels", ".intercept", message, 'use "zero"')
         return True, InterceptTest(False, None, None, None)
-    line = scored(points, fitted_lines(points, settings, through_zero=False), settings)[0].line
+    line = fits.of(series, through_zero=False)[2].line
     degrees = float(line.degrees_of_freedom[0])
     if degrees <= 0:
         return settings.intercept != "fitted", InterceptTest(settings.intercept == "fitted", float(line.intercept[0]), None, None)
     u = float(line.intercept_u[0])
     t = float(line.intercept[0]) / u if u > 0 else 0.0
     probability = float(t_tail_two_sided(t, degrees))
-    there = abs(float(line.intercept[0])) > ROUNDING * float(points.amount.max())
+    there = abs(float(line.intercept[0])) > ROUNDING * float(series.amount.max())
     fitted = settings.intercept == "fitted" or (probability < settings.significance and there)
     return not fitted, InterceptTest(fitted, float(line.intercept[0]), t, probability)
 
 
-def _screened(series: Series, settings: StandardsSettings, *, through_zero: bool) -> tuple[Series, tuple[MarkedStandard, ...]]:
+def _screened(series: Series, fits: _Fits, *, through_zero: bool) -> tuple[Series, tuple[MarkedStandard, ...]]:
     """Mark standards off the curve; leave them out, the worst first and one at a time, where that is the rule."""
     left_out: list[MarkedStandard] = []
     while True:
-        outliers = _outliers(series, settings, through_zero=through_zero)
-        if settings.outliers != "leave-out" or not outliers or len(series) <= LEAST_LEFT:
+        outliers = _outliers(series, fits, through_zero=through_zero)
+        if fits.settings.outliers != "leave-out" or not outliers or len(series) <= LEAST_LEFT:
             return series, (*left_out, *(_marked(series, o, left_out=False) for o in outliers))
         left_out.append(_marked(series, outliers[0], left_out=True))
         series = series.take(np.array([k for k in range(len(series)) if k != outliers[0].row]))
 
 
-def _outliers(series: Series, settings: StandardsSettings, *, through_zero: bool) -> list[Outlier]:
-    points = points_of(series, through_zero=through_zero)
+def _outliers(series: Series, fits: _Fits, *, through_zero: bool) -> list[Outlier]:
+    points, _, scores, _ = fits.of(series, through_zero=through_zero)
     blanks = len(points) - len(series)
-    scores, _ = scored(points, fitted_lines(points, settings, through_zero=through_zero), settings)
-    found = find_outliers(scores.amount, scores.value, scores.weight, through_zero=through_zero, significance=settings.significance)
+    found = find_outliers(
+        scores.amount, scores.value, scores.weight, through_zero=through_zero, significance=fits.settings.significance
+    )
     return [replace(o, row=o.row - blanks) for o in found if o.row >= blanks]
 
 

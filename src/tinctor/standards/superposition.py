@@ -54,27 +54,26 @@ class Superposition:
     holds_to: float | None
 
 
-def superposition(points: Series, settings: StandardsSettings, *, through_zero: bool) -> Superposition:
-    """Return the agreement of all preparations, and of the largest set from below that agrees.
+def superposition(points: Series, lines: Lines, settings: StandardsSettings) -> Superposition:
+    """Return the agreement of all preparations about their lines, and of the largest set from below that agrees.
 
     A single preparation agrees with itself and shows nothing: then `holds_to` is None.
     """
     standards = points.amount > 0
-    departures = agreement(points, settings, through_zero=through_zero)
+    departures = agreement(points, lines, settings)
     if not departures:
         return Superposition(True, (), float(points.amount.max()) if _preparations(points) > 1 else None)
     for top in np.unique(points.amount[standards])[-2::-1]:
         below = points.take(np.flatnonzero(points.amount <= top))
-        if _preparations(below) < 2 or (not through_zero and len(below) < 3):
+        if _preparations(below) < 2 or (not lines.through_zero and len(below) < 3):
             break
-        if not agreement(below, settings, through_zero=through_zero):
+        if not agreement(below, fitted_lines(below, settings, through_zero=lines.through_zero), settings):
             return Superposition(False, departures, float(top))
     return Superposition(False, departures, None)
 
 
-def agreement(points: Series, settings: StandardsSettings, *, through_zero: bool) -> tuple[Departure, ...]:
+def agreement(points: Series, lines: Lines, settings: StandardsSettings) -> tuple[Departure, ...]:
     """Return the departures from the mean shape of a set: beyond noise and model error at the Bonferroni limit of all readings."""
-    lines = fitted_lines(points, settings, through_zero=through_zero)
     residual, fitted = shape_residual(points, lines, settings)
     variance = reading_variance(points, fitted, settings) + settings.model_error_absorbance**2
     variance = variance + (settings.model_error_relative * fitted) ** 2
