@@ -26,6 +26,11 @@ RESOLVE = [
 ]  # fmt: skip
 
 
+SERIES = [
+    f"{DATA}/standards.csv", "--sheet", f"{DATA}/standards-sheet.csv", "--unit", "mg/L", "--stock-relative-u", "0.004",
+]  # fmt: skip
+
+
 def tinctor(python: Path, *arguments: str, show: bool = True) -> str:
     """Run a command, show it as one would type it, and return what it prints."""
     if show:
@@ -63,6 +68,9 @@ def main() -> int:
     tinctor(python, "library", "show", "palewater-dyehouse/tarn-blue")
     tinctor(python, *RESOLVE)
     compare(tinctor(python, *RESOLVE, "--format", "csv", show=False))
+    print("\nA new lot of Tarn Blue, weighed: its record, and three baths of it alone.")
+    tinctor(python, "standards", *SERIES, "--name", "tarn-blue-p208")
+    tinctor(python, "determine", f"{DATA}/unknowns.csv", "--standards", *SERIES)
     return 0
 
 

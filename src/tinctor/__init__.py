@@ -30,6 +30,10 @@ if TYPE_CHECKING:
     from tinctor.resolve.resolution import Resolution
     from tinctor.resolve.settings import ResolveSettings
     from tinctor.spectrum import Spectrum, SpectrumBatch
+    from tinctor.standards.characterise import characterise as characterise_standards
+    from tinctor.standards.determine import determine as determine_unknowns
+    from tinctor.standards.series import Standard, series_of
+    from tinctor.standards.settings import StandardsSettings
 
 __all__ = [
     "Collection",
@@ -41,13 +45,18 @@ __all__ = [
     "ResolveSettings",
     "Spectrum",
     "SpectrumBatch",
+    "Standard",
+    "StandardsSettings",
     "TinctorError",
     "UndeterminedError",
     "__version__",
+    "characterise_standards",
+    "determine_unknowns",
     "load_collection",
     "read_spectra",
     "resolve_batch",
     "run_document",
+    "series_of",
 ]
 
 _HOMES = {
@@ -60,12 +69,17 @@ _HOMES = {
     "ResolveSettings": "tinctor.resolve.settings",
     "Spectrum": "tinctor.spectrum",
     "SpectrumBatch": "tinctor.spectrum",
+    "Standard": "tinctor.standards.series",
+    "StandardsSettings": "tinctor.standards.settings",
     "TinctorError": "tinctor.errors",
     "UndeterminedError": "tinctor.errors",
+    "characterise_standards": "tinctor.standards.characterise:characterise",
+    "determine_unknowns": "tinctor.standards.determine:determine",
     "load_collection": "tinctor.library",
     "read_spectra": "tinctor.files",
     "resolve_batch": "tinctor.resolve.engine:resolve",
     "run_document": "tinctor.operations.registry",
+    "series_of": "tinctor.standards.series",
 }
 
 

@@ -23,6 +23,7 @@ class Provenance(ResponseModel):
     version: str
     python: str
     numpy: str
+    scipy: str | None = Field(default=None, description="null where it was not used")
     request_sha256: str = Field(description="of the request in canonical form: keys sorted, no blanks, defaults filled in")
     records: list[RecordUsed] = Field(default=[])
     settings: dict[str, Any] = Field(default={})
@@ -50,7 +51,17 @@ def provenance(request: RequestModel, records: list[RecordUsed], settings: dict[
         version=__version__,
         python=sys.version.split()[0],
         numpy=np.__version__,
+        scipy=_scipy_used(),
         request_sha256=request_sha256(request),
         records=records,
         settings=settings,
     )
+
+
+def _scipy_used() -> str | None:
+    """Version of scipy where an operation that uses it has been loaded; importing it to find out would cost a cold start."""
+    if "tinctor.standards.distributions" not in sys.modules:
+        return None
+    import scipy
+
+    return str(scipy.__version__)
