@@ -43,9 +43,10 @@ def standards_table(response: StandardsResponse) -> str:
     spectrum = _spectrum(component)
     top = max(range(len(spectrum)), key=spectrum.__getitem__)
     unit = _unit(component)
+    without = " without the stock" if response.uncertainty.stock is None else ""
     lines = [
         f"{printable(component.name)}: {len(response.standards_used)} preparations, {len(spectrum)} wavelengths",
-        f"  highest absorptivity   {_with_interval(spectrum[top], response.slope_interval[top])} {unit} at "
+        f"  highest absorptivity   {_with_interval(spectrum[top], response.slope_interval[top], without)} {unit} at "
         f"{component.wavelength_nm[top]:g} nm",
         f"  scale uncertainty      {_scale(response)}",
         f"  Beer's law shown to    {_linear_to(response)}",
@@ -172,11 +173,11 @@ def _key(c: ComponentOut) -> str:
     return "molar_absorptivity" if c.molar_absorptivity is not None else "mass_absorptivity"
 
 
-def _with_interval(value: float, interval: list[float | None]) -> str:
+def _with_interval(value: float, interval: list[float | None], without: str) -> str:
     low, high = interval
     if low is None or high is None:
         return significant(value, 4)
-    return f"{significant(value, 4)} (95 %: {significant(low, 4)} to {significant(high, 4)})"
+    return f"{significant(value, 4)} (95 %{without}: {significant(low, 4)} to {significant(high, 4)})"
 
 
 def _scale(response: StandardsResponse) -> str:
