@@ -35,7 +35,7 @@ import numpy as np
 from tinctor import NoiseModel, Spectrum
 from tinctor.standards.characterise import Characterisation, characterise
 from tinctor.standards.determine import determine
-from tinctor.standards.series import Standard, series_of
+from tinctor.standards.series import Series, Standard, series_of
 from tinctor.standards.settings import StandardsSettings
 
 W = np.linspace(450.0, 650.0, 101)
@@ -49,6 +49,7 @@ LEVELS = {
     "8 levels": tuple(np.linspace(0.0025, 0.02, 8)),
     "4 levels, 3 preparations each": tuple(np.repeat([0.005, 0.01, 0.015, 0.02], 3)),
 }
+WHAT = ("at the maximum", "scale of the record", "inverse, 1 wavelength", "inverse, spectrum")
 INTERCEPTS = ("zero", "fitted")
 #: Three points less two parameters: Welch and Satterthwaite's formula is rough with one degree of freedom.
 ONE_DEGREE = ("3 levels", "fitted")
@@ -95,15 +96,16 @@ def series(levels: tuple[float, ...], rng: np.random.Generator, bend: float = 0.
     return scans
 
 
-def results(levels: tuple[float, ...], intercept: str, count: int, seed: int, *, declared: bool = True) -> list[tuple[float, ...]]:
+def results(
+    levels: tuple[float, ...], intercept: str, count: int, seed: int, *, declared: bool = True, blank: bool = False
+) -> list[tuple[float, ...]]:
     """Whether interval at the maximum, scale, one-wavelength and whole-spectrum inverse hold the truth, for each series."""
     rng = np.random.default_rng([seed, len(levels), INTERCEPTS.index(intercept)])
     chosen = settings(intercept, declared=declared)
     found = []
     for _ in range(count):
-        scans = series(levels, rng)
-        result = characterise(series_of(scans), chosen)
-        found.append((*_record_holds(result), *_inverse_holds(scans, chosen, rng)))
+        made = series_of(series(levels, rng), [Spectrum("blank", W, reading(0.0, rng))] if blank else [])
+        found.append((*_record_holds(characterise(made, chosen)), *_inverse_holds(made, chosen, rng)))
     return found
 
 
@@ -113,12 +115,12 @@ def _record_holds(result: Characterisation) -> tuple[bool, bool]:
     return bool(at_top), abs(scale) < 1.959964 * (result.spread.common_relative_u or 0.0)
 
 
-def _inverse_holds(scans: list[Standard], chosen: StandardsSettings, rng: np.random.Generator) -> tuple[bool, bool]:
+def _inverse_holds(made: Series, chosen: StandardsSettings, rng: np.random.Generator) -> tuple[bool, bool]:
     truth = rng.uniform(0.006, 0.018)
     unknown = [Spectrum("u", W, reading(truth, rng))]
     held = []
     for wavelength_nm in (float(W[TOP]), None):
-        found = determine(series_of(scans), [unknown], chosen, wavelength_nm=wavelength_nm).unknowns[0]
+        found = determine(made, [unknown], chosen, wavelength_nm=wavelength_nm).unknowns[0]
         # no bounded interval: the line says nothing about the unknown, and so nothing false
         held.append(found.interval is None or found.interval[0] <= truth <= found.interval[1])
     return held[0], held[1]
@@ -139,11 +141,13 @@ def coverage(count: int, seed: int) -> list[Outcome]:
     for name, levels in LEVELS.items():
         for intercept in INTERCEPTS:
             held = np.mean(results(levels, intercept, count, seed), axis=0)
-            for what, share in zip(
-                ("at the maximum", "scale of the record", "inverse, 1 wavelength", "inverse, spectrum"), held, strict=True
-            ):
+            for what, share in zip(WHAT, held, strict=True):
                 low, high = (0.90, 0.99) if (name, intercept) == ONE_DEGREE else (0.93, 0.97)
                 outcomes.append(Outcome(f"{name}, intercept {intercept}: {what}", float(share), low, high, count))
+    for intercept in INTERCEPTS:
+        held = np.mean(results(LEVELS["5 levels"], intercept, count, seed, blank=True), axis=0)
+        for what, share in zip(WHAT, held, strict=True):
+            outcomes.append(Outcome(f"5 levels and a blank, intercept {intercept}: {what}", float(share), 0.93, 0.97, count))
     held = np.mean(results(LEVELS["5 levels"], "zero", count, seed, declared=False), axis=0)
     outcomes.append(Outcome("5 levels, stock error undeclared: scale of the record", float(held[1]), 0.0, 0.85, count))
     return outcomes

@@ -8,16 +8,16 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from tinctor.arrays import FloatArray
 from tinctor.axis import SAME_WAVELENGTH_NM
 from tinctor.errors import InputError
 from tinctor.spectrum import Spectrum
 from tinctor.standards.characterise import Characterisation, characterise
 from tinctor.standards.distributions import normal_quantile, t_quantile
-from tinctor.standards.inverse import CalibrationLine, Inverse, inverse_prediction, of_lines, standard_addition
+from tinctor.standards.inverse import CalibrationLine, Inverse, inverse_prediction, standard_addition
 from tinctor.standards.limits import Limits, blank_limits, calibration_limits, ich_limits, known_sigma_limits
 from tinctor.standards.series import Series, Standard, series_of
 from tinctor.standards.settings import StandardsSettings
+from tinctor.standards.signals import Signals
 
 __all__ = ["Addition", "Determination", "Unknown", "determine", "determine_by_addition"]
 
@@ -84,69 +84,6 @@ class Addition:
     interval: tuple[float, float] | None
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class _Signals:
-    """How a spectrum becomes the signal of a line: one wavelength, or its score against the mean shape."""
-
-    result: Characterisation
-    settings: StandardsSettings
-    column: int | None
-    limit: float = 2.0
-
-    def line(self) -> CalibrationLine:
-        x = self.result.points.amount
-        if self.column is None:
-            scores = self.result.scores
-            return of_lines(scores.line, 0, x, _unit_sd(scores.line.weight[:, 0], scores.variance))
-        lines = self.result.lines
-        return of_lines(lines, self.column, x, _unit_sd(lines.weight[:, self.column], self._variances()))
-
-    def of(self, spectra: FloatArray) -> FloatArray:
-        """Signals of spectra (k, m), the blank taken off where the line goes through zero."""
-        A = spectra - (self.result.points.blanks.mean(axis=0) if len(self.result.points.blanks) else 0.0)
-        if self.column is not None:
-            return np.asarray(A[:, self.column])
-        shape = np.nan_to_num(self.result.lines.slope)
-        return np.asarray(A @ shape / (shape @ shape))
-
-    def departure(self, absorbance: FloatArray, replicates: int) -> tuple[float, float] | None:
-        """Return where a mean spectrum (m,) departs most from its share of the mean shape, beyond the Bonferroni limit."""
-        if self.column is not None:
-            return None
-        settings, lines, points = self.settings, self.result.lines, self.result.points
-        signal = float(self.of(absorbance[None, :])[0]) - float(self.result.scores.line.intercept[0])
-        own = absorbance - (points.blanks.mean(axis=0) if len(points.blanks) else 0.0) - lines.intercept
-        fitted = signal * np.nan_to_num(lines.slope)
-        noise = settings.noise.reading_variance(np.minimum(np.abs(fitted), 10.0)) / replicates
-        blank = float(settings.noise.reading_variance(0.0)) / max(len(points.blanks), 1) if len(points.blanks) else 0.0
-        model = settings.model_error_absorbance**2 + (settings.model_error_relative * fitted) ** 2
-        record = (signal * self.result.spread.absorptivity_u) ** 2
-        limit = normal_quantile(1.0 - settings.significance / (2.0 * own.size)) * np.sqrt(noise + blank + model + record)
-        excess = np.abs(own - fitted) / limit
-        k = int(excess.argmax())
-        return (float(self.result.wavelength_nm[k]), float((own - fitted)[k])) if excess[k] > 1.0 else None
-
-    def variance_ratio(self, signal: float) -> float:
-        """Variance of a reading of an unknown against that of a signal of weight 1: noise and cell, no dilution."""
-        lines, settings = self.result.lines, self.settings
-        shape = np.nan_to_num(lines.slope)
-        if self.column is not None:
-            own = float(settings.noise.reading_variance(min(signal, 10.0))) + settings.model_error_absorbance**2
-            return own / _unit_sd(lines.weight[:, self.column], self._variances()) ** 2
-        scores, size = self.result.scores, float(shape @ shape)
-        noise = float(settings.noise.reading_variance(np.minimum(signal * shape, 10.0)) @ shape**2) / size**2
-        cell = (settings.model_error_absorbance * float(shape.sum()) / size) ** 2
-        return (noise + cell) / _unit_sd(scores.line.weight[:, 0], scores.variance) ** 2
-
-    def _variances(self) -> FloatArray:
-        """Declared variances of the standards' readings at the chosen wavelength, (n,)."""
-        points, lines, settings = self.result.points, self.result.lines, self.settings
-        j = self.column or 0
-        fitted = lines.intercept[j] + points.amount * lines.slope[j]
-        noise = settings.noise.reading_variance(np.minimum(fitted, 10.0)) / points.scans
-        return np.asarray(noise + settings.model_error_absorbance**2 + (points.amount_u * lines.slope[j]) ** 2)
-
-
 def determine(
     series: Series,
     unknowns: Sequence[Sequence[Spectrum]],
@@ -186,7 +123,7 @@ def determine(
     settings = settings or StandardsSettings()
     chosen = series if wavelength_nm is None else series.on(_only(series, wavelength_nm))
     result = characterise(chosen, settings)
-    signals = _Signals(result, settings, None if wavelength_nm is None else 0, absorbance_limit)
+    signals = Signals(result, settings, None if wavelength_nm is None else 0, absorbance_limit)
     line = signals.line()
     kept = np.isin(series.wavelength_nm, result.wavelength_nm)
     limits = _limits(line, signals, series, kept, alpha)
@@ -228,11 +165,14 @@ def determine_by_addition(
         blank = np.mean([b.absorbance for b in blanks], axis=0)
         series = replace(series, absorbance=series.absorbance - blank, blanks=series.blanks - blank)
     result = characterise(series if wavelength_nm is None else series.on(_only(series, wavelength_nm)), settings)
-    line = _Signals(result, settings, None if wavelength_nm is None else 0).line()
+    signals = Signals(result, settings, None if wavelength_nm is None else 0)
+    line = signals.line()
     found = standard_addition(line, coverage)
     stock = abs(found.x) * math.hypot(settings.stock_relative_u or 0.0, settings.path_length_relative_u)
-    interval = _widened(found, line, stock, coverage)
-    return Addition(result, wavelength_nm, line, found, math.hypot(found.u, stock), interval)
+    # the blank was taken off every spectrum: its error is the result's, in full
+    rest = math.hypot(stock, signals.reading_u(0.0) / math.sqrt(len(blanks)) if blanks else 0.0)
+    interval = _widened(found, line, rest, coverage)
+    return Addition(result, wavelength_nm, line, found, math.hypot(found.u, rest), interval)
 
 
 def _only(series: Series, wavelength_nm: float) -> np.ndarray:
@@ -245,13 +185,7 @@ def _only(series: Series, wavelength_nm: float) -> np.ndarray:
     return np.asarray(distance <= SAME_WAVELENGTH_NM)
 
 
-def _unit_sd(weight: FloatArray, variance: FloatArray) -> float:
-    """Declared standard deviation of a signal of weight 1: weights are reciprocal variances scaled to a mean of 1."""
-    used = weight > 0
-    return float(np.sqrt((weight[used] * variance[used]).mean()))
-
-
-def _limits(line: CalibrationLine, signals: _Signals, series: Series, kept: np.ndarray, alpha: float) -> tuple[Limits, ...]:
+def _limits(line: CalibrationLine, signals: Signals, series: Series, kept: np.ndarray, alpha: float) -> tuple[Limits, ...]:
     ratio = signals.variance_ratio(line.intercept)
     found = [calibration_limits(line, alpha, variance_ratio=ratio)]
     if len(series.blanks):
@@ -264,7 +198,7 @@ def _limits(line: CalibrationLine, signals: _Signals, series: Series, kept: np.n
 def _unknown(
     group: list[Spectrum],
     line: CalibrationLine,
-    signals: _Signals,
+    signals: Signals,
     kept: np.ndarray,
     coverage: float,
     decision: float,
@@ -288,13 +222,14 @@ def _unknown(
     outside = outside / (line.high - line.low or line.high) if outside > found.u else 0.0
     refused, code = _refusal(group, kept, signals, found, line, outside, extrapolate=extrapolate)
     shown = not refused
-    widened = _widened(found, line, relative * found.x, coverage)
+    rest = math.hypot(relative * found.x, signals.blank_u(found.x))
+    widened = _widened(found, line, rest, coverage)
     return Unknown(
         id=first.id,
         replicates=len(group),
         amount=found.x,
         concentration=found.x * factor if shown else None,
-        u=math.hypot(found.u, relative * found.x) * factor if shown else None,
+        u=math.hypot(found.u, rest) * factor if shown else None,
         interval=_scaled(widened, factor) if shown and widened else None,
         interval_line=_scaled(found.exact, factor) if shown and found.exact else None,
         interval_approximate=_scaled(found.approximate, factor) if shown else None,
@@ -310,7 +245,7 @@ def _unknown(
 def _refusal(
     group: list[Spectrum],
     kept: np.ndarray,
-    signals: _Signals,
+    signals: Signals,
     found: Inverse,
     line: CalibrationLine,
     outside: float,

@@ -110,7 +110,7 @@ def calibrate_mixtures(
     E = coefficients[:p]
     offset = coefficients[p] if fitted_intercept else np.zeros(absorbance.shape[1])
     apparent: FloatArray = np.linalg.lstsq(E.T, (absorbance - offset).T, rcond=None)[0].T.astype(np.float64)
-    studentised, scale = _scatter(apparent, amounts, leverage, degrees, spread[:p])
+    studentised, scale = _scatter(apparent, amounts, leverage, degrees, (Rinv @ Q.T)[:p])
     unit = X / np.sqrt((X**2).sum(axis=0))
     sizes = np.linalg.svd(unit, compute_uv=False)
     centred = X[:, :p] - X[:, :p].mean(axis=0) if fitted_intercept else X[:, :p]
@@ -132,9 +132,13 @@ def calibrate_mixtures(
 
 
 def _scatter(
-    apparent: FloatArray, amounts: FloatArray, leverage: FloatArray, degrees: int, spread: FloatArray
+    apparent: FloatArray, amounts: FloatArray, leverage: FloatArray, degrees: int, share: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    """Studentised differences (n, p), and the relative standard error of each component's scale (p,)."""
+    """Studentised differences (n, p), and the relative standard error of each component's scale (p,).
+
+    Errors of dilution grow with the amount, so the scale's is that of unequal variances (HC3: MacKinnon and White, J.
+    Econometrics 29 (1985) 305); `share` (p, n) is what each mixture adds to each component.
+    """
     difference = apparent - amounts
     free = np.maximum(1.0 - leverage, 1e-9)[:, None]
     squares = (difference**2).sum(axis=0)
@@ -143,7 +147,7 @@ def _scatter(
     exact = np.sqrt(squares) <= 1e-9 * np.sqrt((amounts**2).sum(axis=0))
     studentised = np.where(exact, 0.0, difference / np.sqrt(without * free))
     wider = float(t_quantile(0.975, float(degrees))) / 1.959964
-    return studentised, np.sqrt(squares / degrees * spread) * wider
+    return studentised, np.sqrt((share**2 * (difference / free).T ** 2).sum(axis=1)) * wider
 
 
 def _dependent(X: FloatArray, names: tuple[str, ...], independent: np.ndarray) -> InputError:

@@ -18,7 +18,7 @@ from tinctor.standards.series import Series
 from tinctor.standards.settings import StandardsSettings
 from tinctor.standards.superposition import shape_residual
 
-__all__ = ["Spread", "spread_of"]
+__all__ = ["Spread", "blank_score_u", "spread_of"]
 
 #: Lag-1 autocorrelation of shape residuals, in standard deviations of chance, above which it is taken into account.
 SIGNIFICANT_CORRELATION = 2.5
@@ -69,8 +69,12 @@ class Spread:
 def spread_of(points: Series, lines: Lines, scores: Scores, settings: StandardsSettings) -> Spread:
     """Return the uncertainties of a fitted series."""
     series_u, basis, probability = _series_scatter(points, scores, settings)
+    if series_u is not None:
+        of_blank = blank_score_u(points, lines, settings) * abs(float(scores.line.share.sum())) / float(scores.line.slope[0])
+        series_u = float(np.hypot(series_u, of_blank))
     blank = _blank_part(points, lines, settings)
-    slope_u = np.sqrt(lines.slope_u**2 + blank**2)
+    cell = settings.model_error_absorbance * _blank_share(points, lines)
+    slope_u = np.sqrt(lines.slope_u**2 + blank**2 + cell**2)
     shared = np.sqrt((settings.stock_relative_u or 0.0) ** 2 + settings.path_length_relative_u**2)
     combined = np.sqrt(slope_u**2 + (shared * lines.slope) ** 2)
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -113,10 +117,25 @@ def _series_scatter(points: Series, scores: Scores, settings: StandardsSettings)
 
 def _blank_part(points: Series, lines: Lines, settings: StandardsSettings) -> FloatArray:
     """What the noise of a blank taken off every standard does to the slope, (m,)."""
+    return float(np.sqrt(settings.noise.reading_variance(0.0))) * _blank_share(points, lines)
+
+
+def _blank_share(points: Series, lines: Lines) -> FloatArray:
+    """What an error of 1 in each blank's reading, independent of the other blanks', does to the slope, (m,); 0 without blanks."""
     if not len(points.blanks):
         return np.zeros_like(lines.slope)
-    u = float(np.sqrt(settings.noise.reading_variance(0.0) / len(points.blanks)))
-    return np.asarray(u * np.abs(lines.share.sum(axis=0)))
+    return np.asarray(np.abs(lines.share.sum(axis=0)) / np.sqrt(len(points.blanks)))
+
+
+def blank_score_u(points: Series, lines: Lines, settings: StandardsSettings) -> float:
+    """Standard uncertainty of the score of the mean blank, by noise and placing of the cell; 0 where none was taken off."""
+    if not len(points.blanks):
+        return 0.0
+    shape = np.nan_to_num(lines.slope)
+    size = float(shape @ shape)
+    cell = settings.model_error_absorbance * float(shape.sum()) / size
+    noise = float(settings.noise.reading_variance(0.0)) / size
+    return float(np.sqrt((cell**2 + noise) / len(points.blanks)))
 
 
 def _own(points: Series, lines: Lines, settings: StandardsSettings, blank: FloatArray) -> FloatArray:
