@@ -12,7 +12,7 @@ from tinctor.standards.distributions import t_tail_two_sided
 from tinctor.standards.line import Lines
 from tinctor.standards.linearity import ROUNDING, LinearityTest, Outlier, find_outliers, tested_ranges
 from tinctor.standards.notes import Dropped, Note, dropped_for_range, notes_of
-from tinctor.standards.score import Scores, fitted_lines, scored
+from tinctor.standards.score import Scores, dilution_relative_u, fitted_lines, scored
 from tinctor.standards.series import Series, points_of
 from tinctor.standards.settings import StandardsSettings
 from tinctor.standards.spread import Spread, spread_of
@@ -129,7 +129,12 @@ class _Fits:
         if key not in self._made:
             points = points_of(series, through_zero=through_zero)
             lines = fitted_lines(points, self.settings, through_zero=through_zero)
-            self._made[key] = (points, lines, *scored(points, lines, self.settings))
+            scores, shown = scored(points, lines, self.settings)
+            if not points.declared and (relative := dilution_relative_u(scores)) > 0:
+                points = replace(points, amount_u=relative * points.amount)
+                lines = fitted_lines(points, self.settings, through_zero=through_zero)
+                scores, shown = scored(points, lines, self.settings)
+            self._made[key] = (points, lines, scores, shown)
         return self._made[key]
 
 

@@ -36,7 +36,7 @@ class Unknown:
     interval_line, interval_approximate
         Of the line alone, exact (Fieller) and approximate, in the original sample.
     outside : float
-        How far outside the standards' range, as a share of it; 0 inside and up to one standard uncertainty beyond.
+        How far outside the standards' range, as a share of it; 0 inside and up to two standard uncertainties beyond.
     replicate_sd : float or None
         Of the concentration between replicates.
     departure : (wavelength_nm, absorbance) or None
@@ -127,10 +127,7 @@ def determine(
     line = signals.line()
     kept = np.isin(series.wavelength_nm, result.wavelength_nm)
     limits = _limits(line, signals, series, kept, alpha)
-    found = [
-        _unknown(list(group), line, signals, kept, coverage, limits[0].decision or 0.0, extrapolate=extrapolate)
-        for group in unknowns
-    ]
+    found = [_unknown(list(group), line, signals, kept, coverage, alpha, extrapolate=extrapolate) for group in unknowns]
     return Determination(result, wavelength_nm, line, limits, tuple(found))
 
 
@@ -168,7 +165,7 @@ def determine_by_addition(
     signals = Signals(result, settings, None if wavelength_nm is None else 0)
     line = signals.line()
     found = standard_addition(line, coverage)
-    stock = abs(found.x) * math.hypot(settings.stock_relative_u or 0.0, settings.path_length_relative_u)
+    stock = abs(found.x) * (settings.stock_relative_u or 0.0)  # the cell is the same for all: its path cancels
     # the blank was taken off every spectrum: its error is the result's, in full
     rest = math.hypot(stock, signals.reading_u(0.0) / math.sqrt(len(blanks)) if blanks else 0.0)
     interval = _widened(found, line, rest, coverage)
@@ -186,13 +183,20 @@ def _only(series: Series, wavelength_nm: float) -> np.ndarray:
 
 
 def _limits(line: CalibrationLine, signals: Signals, series: Series, kept: np.ndarray, alpha: float) -> tuple[Limits, ...]:
-    ratio = signals.variance_ratio(line.intercept)
-    found = [calibration_limits(line, alpha, variance_ratio=ratio)]
+    found = [_decision(line, signals, alpha, 1)]
     if len(series.blanks):
         blank = blank_limits(line, signals.of(series.blanks[:, kept]), alpha)
         found += [blank] if blank else []
-    found.append(known_sigma_limits(line.residual_sd * math.sqrt(ratio) / abs(line.slope), alpha))
+    found.append(known_sigma_limits(math.hypot(signals.reading_u(0.0), signals.blank_u(0.0)), alpha))
     return (*found, *ich_limits(line, intercept=line.rest > 0))
+
+
+def _decision(line: CalibrationLine, signals: Signals, alpha: float, replicates: int) -> Limits:
+    """Limits from the line for so many readings, the blank that was taken off included."""
+    of_blank = (signals.blank_u(0.0) * abs(line.slope) / line.residual_sd) ** 2 if line.residual_sd > 0 else 0.0
+    # of the blank there is one, however many readings of the unknown: its part is not divided by them
+    ratio = signals.variance_ratio(line.intercept) + replicates * of_blank
+    return calibration_limits(line, alpha, replicates=replicates, variance_ratio=ratio)
 
 
 def _unknown(
@@ -201,7 +205,7 @@ def _unknown(
     signals: Signals,
     kept: np.ndarray,
     coverage: float,
-    decision: float,
+    alpha: float,
     *,
     extrapolate: bool,
 ) -> Unknown:
@@ -217,9 +221,11 @@ def _unknown(
         + (first.path_length_u_cm / first.path_length_cm) ** 2
         + (first.dilution_factor_u / first.dilution_factor) ** 2
     )
-    # less than its standard uncertainty beyond the last standard is at the last standard
-    outside = max(line.low - found.x, found.x - line.high, 0.0)
-    outside = outside / (line.high - line.low or line.high) if outside > found.u else 0.0
+    # within twice its standard uncertainty of the last standard it is not shown to lie beyond it; a line that zero or a blank
+    # holds goes on below zero, where the noise of nothing lies
+    below = line.low - found.x if line.low > 0 else 0.0
+    outside = max(below, found.x - line.high, 0.0)
+    outside = outside / (line.high - line.low or line.high) if outside > 2.0 * found.u else 0.0
     refused, code = _refusal(group, kept, signals, found, line, outside, extrapolate=extrapolate)
     shown = not refused
     rest = math.hypot(relative * found.x, signals.blank_u(found.x))
@@ -235,7 +241,7 @@ def _unknown(
         interval_approximate=_scaled(found.approximate, factor) if shown else None,
         outside=outside,
         replicate_sd=float(np.std(values, ddof=1)) / abs(line.slope) * factor if len(group) > 1 and shown else None,
-        below_decision=found.x < decision,
+        below_decision=found.x < (_decision(line, signals, alpha, len(group)).decision or 0.0),
         departure=signals.departure(np.stack([s.absorbance[kept] for s in group]).mean(axis=0), len(group)),
         refused=refused,
         refused_code=code,

@@ -28,6 +28,8 @@ __all__ = [
 
 #: Degrees of freedom that replicate preparations must give before lack of fit is tested against them.
 LEAST_PURE_ERROR = 2
+#: Amounts closer than this share of the highest are one level: a curve through them would be one through a point.
+SAME_LEVEL = 1e-4
 #: Levels below this share of the highest say little about how straight a line is.
 LEAST_SHARE = 0.1
 #: Share of the significance level that goes to the highest level alone: a sudden bend hides from the quadratic term.
@@ -211,9 +213,9 @@ def _f(between_squares: float, between: int, within_squares: float, within: int)
 
 
 def _levels(x: FloatArray) -> np.ndarray:
-    """Number of the level of each point, from 0; amounts equal to 1e-9 are one level."""
+    """Number of the level of each point, from 0; amounts equal to 1e-4 of the highest are one level."""
     order = np.argsort(x, kind="stable")
-    step = np.diff(x[order]) > 1e-9 * max(float(np.abs(x).max()), 1e-300)
+    step = np.diff(x[order]) > SAME_LEVEL * max(float(np.abs(x).max()), 1e-300)
     level = np.zeros(x.size, dtype=int)
     level[order] = np.concatenate([[0], np.cumsum(step)])
     return level

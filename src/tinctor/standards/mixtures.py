@@ -95,6 +95,10 @@ def calibrate_mixtures(
             ".standards",
             f"{columns} unknowns at each wavelength need at least {columns + 1} mixtures, found {n}",
         )
+    if absorbance.shape[1] < p:
+        raise InputError.single(
+            "too-few-wavelengths", ".mixtures", f"{p} components need at least {p} wavelengths, found {absorbance.shape[1]}"
+        )
     X = np.column_stack([amounts, np.ones(n)]) if fitted_intercept else amounts
     Q, Rinv, independent = orthonormal_factors(X)
     if not independent.all():

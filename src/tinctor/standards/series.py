@@ -16,6 +16,10 @@ from tinctor.spectrum import Spectrum
 __all__ = ["Series", "Standard", "points_of", "same_axis", "series_of"]
 
 
+#: No solution holds less or more, in mol/L or g/L: beyond lies a wrong unit or a slip of the keyboard.
+LOWEST, HIGHEST = 1e-15, 1e5
+
+
 @dataclass(frozen=True, slots=True)
 class Standard:
     """One scan of one standard.
@@ -45,10 +49,9 @@ class Standard:
     def __post_init__(self) -> None:
         c, u = self.concentration, self.concentration_u
         faults = []
-        if not (math.isfinite(c) and c > 0):
-            faults.append(
-                Fault("concentration", ".concentration", f"expected a number above 0, found {c!r}", "a blank goes with the blanks")
-            )
+        if not (math.isfinite(c) and LOWEST <= c <= HIGHEST):
+            message = f"expected a number above 0 (and from {LOWEST:g} to {HIGHEST:g} mol/L or g/L), found {c!r}"
+            faults.append(Fault("concentration", ".concentration", message, "a blank goes with the blanks"))
         if u is not None and not (math.isfinite(u) and u >= 0):
             faults.append(Fault("concentration-u", ".concentration_u", f"expected a number of at least 0, found {u!r}"))
         if self.spectrum.dilution_factor != 1:
@@ -163,7 +166,7 @@ def series_of(standards: Sequence[Standard], blanks: Sequence[Spectrum] = (), ab
     readings = [np.stack([s.spectrum.absorbance for s in group]) for group in groups]
     used = [(scan <= absorbance_limit).all(axis=0) for scan in readings]
     spread = [((scan - scan.mean(axis=0)) ** 2).sum(axis=0)[ok].mean() for scan, ok in zip(readings, used, strict=True) if ok.any()]
-    degrees = sum(len(group) - 1 for group in groups)
+    degrees = sum(len(group) - 1 for group, ok in zip(groups, used, strict=True) if ok.any())
     return Series(
         ids=tuple(group[0].id for group in groups),
         amount=np.array([group[0].amount for group in groups]),

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from tinctor.arrays import FloatArray
+from tinctor.errors import UndeterminedError
 from tinctor.standards.characterise import Characterisation
 from tinctor.standards.distributions import normal_quantile
 from tinctor.standards.inverse import CalibrationLine, of_lines
@@ -37,7 +38,16 @@ class Signals:
     limit: float = 2.0
 
     def line(self) -> CalibrationLine:
-        """Return the line of signal on concentration times path."""
+        """Return the line of signal on concentration times path.
+
+        Raises
+        ------
+        UndeterminedError
+            When the signal does not grow with concentration.
+        """
+        slopes = self.result.scores.line.slope if self.column is None else self.result.lines.slope
+        if not (np.isfinite(slopes).all() and slopes[self.column or 0] > 0):
+            raise UndeterminedError("the standards' signal does not grow with concentration: nothing can be read from their line")
         x = self.result.points.amount
         if self.column is None:
             scores = self.result.scores

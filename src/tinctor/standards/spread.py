@@ -112,7 +112,8 @@ def _series_scatter(points: Series, scores: Scores, settings: StandardsSettings)
     probability = chi_square_tail(chi_square, degrees)
     if probability >= settings.significance:
         return declared, "declared", probability
-    return declared * float(np.sqrt(chi_square / degrees)), "declared, enlarged", probability  # Birge's ratio
+    wider = float(t_quantile(0.975, degrees)) / 1.959964  # the ratio is estimated from few degrees of freedom
+    return declared * float(np.sqrt(chi_square / degrees)) * wider, "declared, enlarged", probability  # Birge's ratio
 
 
 def _blank_part(points: Series, lines: Lines, settings: StandardsSettings) -> FloatArray:
