@@ -7,7 +7,7 @@ from typing import Any
 import numpy as np
 import pytest
 
-from tinctor.errors import InputError
+from tinctor.errors import InputError, UndeterminedError
 from tinctor.operations.registry import run_document
 
 W = np.linspace(450.0, 650.0, 51)
@@ -178,3 +178,34 @@ def test_compositions_that_cannot_tell_are_refused_or_flagged() -> None:
     found = faults(mixtures([{**MIXTURES[0], "concentrations": {"a": -1.0, "b": 1.0}}, *MIXTURES[1:]]), "mixtures")
     assert found == {"$.mixtures[0].concentrations.a": "negative"}
     assert faults(mixtures(MIXTURES, stock_relative_u={"c": 0.1}), "mixtures") == {"$.stock_relative_u": "unknown-component"}
+
+
+def test_nothing_can_be_read_from_a_line_that_does_not_rise() -> None:
+    flat = [{**s, "absorbance": [0.0] * W.size} for s in STANDARDS]
+    with pytest.raises(UndeterminedError):
+        run_document("determine", request(spectrum("u", 3.0), standards=flat))
+    with pytest.raises(UndeterminedError):
+        run_document("determine", request(spectrum("u", 3.0), standards=flat, wavelength_nm=550.0))
+
+
+def test_what_is_just_beyond_the_last_standard_is_at_it_and_noise_below_zero_is_a_figure() -> None:
+    found = run_document("determine", request(spectrum("top", 24.02), spectrum("none", -0.02), model_error={"absorbance": 0.001}))
+    assert [r["status"] for r in found["results"]] == ["accepted", "accepted"]
+    assert found["results"][1]["interval"][0] < 0
+
+
+def test_the_blank_is_in_the_decision_limit() -> None:
+    plain = run_document("determine", request(spectrum("u", 3.0), intercept="zero"))["limits"][0]["decision"]
+    blanked = request(spectrum("u", 3.0), intercept="zero", blank=[spectrum("blank", 0.0)])
+    assert run_document("determine", blanked)["limits"][0]["decision"] > 1.2 * plain
+
+
+def test_path_lengths_of_mixtures_count() -> None:
+    thin = [{**m, "absorbance": (np.array(m["absorbance"]) / 2).tolist(), "path_length_cm": 0.5} for m in MIXTURES]
+    a, _ = run_document("mixtures", mixtures(thin))["components"]
+    np.testing.assert_allclose(a["mass_absorptivity"], E, atol=0.1)
+
+
+def test_fewer_wavelengths_than_components_are_refused() -> None:
+    narrow = [{**m, "wavelength_nm": [550.0], "absorbance": m["absorbance"][25:26]} for m in MIXTURES]
+    assert faults(mixtures(narrow), "mixtures") == {"$.mixtures": "too-few-wavelengths"}

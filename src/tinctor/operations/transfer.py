@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
+import numpy as np
 from pydantic import Field
 
 from tinctor.component import Component
 from tinctor.errors import InputError
 from tinctor.library import load_collection
 from tinctor.operations.provenance import Provenance, provenance
-from tinctor.operations.shared import ComponentChoice, NoiseIn, RecordUsed, RequestModel, ResponseModel, SpectrumIn, gather
+from tinctor.operations.shared import ComponentChoice, NoiseIn, Number, RecordUsed, RequestModel, ResponseModel, SpectrumIn, gather
 from tinctor.operations.standards_results import ComponentOut, NoteOut, finite
 from tinctor.standards.transfer import Transfer, corrected_absorptivity, estimate_transfer
 
@@ -28,6 +29,7 @@ class TransferRequest(RequestModel):
     check: SpectrumIn = Field(description="the same substance on the other instrument; its concentration need not be known")
     blank: SpectrumIn | None = None
     noise: NoiseIn = NoiseIn()
+    absorbance_limit: Number = Field(2.0, gt=0, description="readings of the check above are not used")
 
 
 class TransferResponse(ResponseModel):
@@ -76,6 +78,7 @@ def run(request: TransferRequest) -> TransferResponse:
         if blank.wavelength_nm.shape != check.wavelength_nm.shape or abs(blank.wavelength_nm - check.wavelength_nm).max() > 1e-6:
             raise InputError.single("axes-differ", "$.blank.wavelength_nm", "the blank has other wavelengths than the check")
         A = A - blank.absorbance
+    used_readings = check.absorbance <= request.absorbance_limit
     found: Transfer
     (found,) = gather(
         [
@@ -84,8 +87,8 @@ def run(request: TransferRequest) -> TransferResponse:
                 lambda: estimate_transfer(
                     component.wavelength_nm,
                     component.absorptivity,
-                    check.wavelength_nm,
-                    A,
+                    check.wavelength_nm[used_readings],
+                    A[used_readings],
                     noise,
                     component.conditions.bandwidth_nm,
                 ),
@@ -106,7 +109,7 @@ def run(request: TransferRequest) -> TransferResponse:
         points=found.points,
         component=corrected,
         parent=used[0].record if used else None,
-        flags=_flags(found, float(A.max())),
+        flags=[*_saturated(used_readings), *_flags(found, float(A[used_readings].max()))],
         provenance=provenance(request, used, request.model_dump(by_alias=True, exclude={"component", "check", "blank", "schema_"})),
     )
 
@@ -142,6 +145,13 @@ def _corrected(component: Component, found: Transfer, name: str) -> ComponentOut
         linear_to=component.linear_to,
         conditions=known or None,
     )
+
+
+def _saturated(used: np.ndarray) -> list[NoteOut]:
+    if used.all():
+        return []
+    message = f"{int((~used).sum())} readings of the check are above the absorbance limit and were not used"
+    return [NoteOut(code="saturated", severity="info", message=message)]
 
 
 def _flags(found: Transfer, highest: float) -> list[NoteOut]:

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from tinctor.arrays import FloatArray, quoted
-from tinctor.errors import InputError
+from tinctor.errors import InputError, UndeterminedError
 from tinctor.standards.distributions import t_tail_two_sided
 from tinctor.standards.line import Lines
 from tinctor.standards.linearity import ROUNDING, LinearityTest, Outlier, find_outliers, tested_ranges
@@ -22,6 +22,9 @@ __all__ = ["Characterisation", "InterceptTest", "MarkedStandard", "characterise"
 
 #: Fewer preparations than this have none left out by rule.
 LEAST_LEFT = 3
+#: Where nobody stated the dilution's relative uncertainty, weights take it for no less (common practice for pipettes and
+#: flasks): with weights of noise alone the strongest standard, whose dilution error is the largest, would decide everything.
+LEAST_DILUTION_U = 0.003
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,6 +96,8 @@ def characterise(series: Series, settings: StandardsSettings | None = None) -> C
     ------
     InputError
         When nothing is left to fit, or an id to leave out is not there.
+    UndeterminedError
+        When no absorption grows with concentration.
 
     Examples
     --------
@@ -129,8 +134,13 @@ class _Fits:
         if key not in self._made:
             points = points_of(series, through_zero=through_zero)
             lines = fitted_lines(points, self.settings, through_zero=through_zero)
+            if not (lines.slope > 0).any():
+                raise UndeterminedError(
+                    "the standards show no absorption that grows with concentration: nothing can be made of them"
+                )
             scores, shown = scored(points, lines, self.settings)
-            if not points.declared and (relative := dilution_relative_u(scores)) > 0:
+            if not points.declared:
+                relative = max(dilution_relative_u(scores), LEAST_DILUTION_U)
                 points = replace(points, amount_u=relative * points.amount)
                 lines = fitted_lines(points, self.settings, through_zero=through_zero)
                 scores, shown = scored(points, lines, self.settings)

@@ -1,13 +1,15 @@
-"""Student, Fisher, chi-square and normal distributions, from scipy.special under names that say which way they go."""
+"""What the package takes from scipy: Student, Fisher, chi-square and normal distributions under names that say which way they
+go, and the cubic spline."""
 
 from __future__ import annotations
 
 import numpy as np
 from scipy import special
+from scipy.interpolate import CubicSpline
 
 from tinctor.arrays import FloatArray
 
-__all__ = ["chi_square_tail", "f_tail", "normal_quantile", "t_quantile", "t_tail_two_sided"]
+__all__ = ["chi_square_tail", "cubic_spline", "f_tail", "normal_quantile", "t_quantile", "t_tail_two_sided"]
 
 
 def t_quantile(probability: float, degrees_of_freedom: float | FloatArray) -> FloatArray:
@@ -48,3 +50,8 @@ def chi_square_tail(chi_square: float, degrees_of_freedom: float) -> float:
 def normal_quantile(probability: float) -> float:
     """Return the standard normal quantile."""
     return float(special.ndtri(probability))
+
+
+def cubic_spline(x: FloatArray, y: FloatArray) -> CubicSpline[np.float64]:
+    """Return the cubic spline through points; its third derivative is continuous at the second and last but one."""
+    return CubicSpline(x, y)

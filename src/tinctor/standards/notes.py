@@ -154,6 +154,13 @@ def _uncertainty_notes(result: Characterisation, settings: StandardsSettings) ->
             f"is enlarged to {100 * (spread.series_relative_u or 0):.2g} %"
         )
         yield Note("scatter-exceeds-declared", "warning", message)
+    elif not result.points.declared and spread.series_relative_u is not None:
+        relative = float((result.points.amount_u / np.maximum(result.points.amount, np.finfo(float).tiny)).max())
+        message = (
+            f"concentration_u is not stated: {100 * relative:.2g} % is taken for the dilution of each standard, from their "
+            "scatter and no less than 0.3 % (common practice)"
+        )
+        yield Note("dilution-not-stated", "info", message)
     if spread.series_relative_u is None:
         yield Note(
             "dilution-not-stated",

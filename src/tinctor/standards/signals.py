@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -50,10 +50,16 @@ class Signals:
             raise UndeterminedError("the standards' signal does not grow with concentration: nothing can be read from their line")
         x = self.result.points.amount
         if self.column is None:
-            scores = self.result.scores
-            return of_lines(scores.line, 0, x, _unit_sd(scores.line.weight[:, 0], scores.variance))
-        lines = self.result.lines
-        return of_lines(lines, self.column, x, _unit_sd(lines.weight[:, self.column], self._variances()))
+            lines, unit_sd = self.result.scores.line, _unit_sd(self.result.scores.line.weight[:, 0], self.result.scores.variance)
+        else:
+            lines = self.result.lines
+            unit_sd = _unit_sd(lines.weight[:, self.column], self._variances())
+        line = of_lines(lines, self.column or 0, x, unit_sd)
+        if self.result.points.declared or line.residual_sd >= unit_sd:
+            return line
+        # as in `spread`: where nobody stated the dilution, a scatter smaller than what is taken for it is luck
+        factor = unit_sd / line.residual_sd if line.residual_sd > 0 else 1.0
+        return replace(line, residual_sd=unit_sd, slope_u=line.slope_u * factor, intercept_u=line.intercept_u * factor)
 
     def of(self, spectra: FloatArray) -> FloatArray:
         """Signals of spectra (k, m), the blank taken off where the line goes through zero."""

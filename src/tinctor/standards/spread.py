@@ -74,12 +74,13 @@ def spread_of(points: Series, lines: Lines, scores: Scores, settings: StandardsS
         series_u = float(np.hypot(series_u, of_blank))
     blank = _blank_part(points, lines, settings)
     cell = settings.model_error_absorbance * _blank_share(points, lines)
-    slope_u = np.sqrt(lines.slope_u**2 + blank**2 + cell**2)
+    scatter = lines.slope_u if points.declared else np.maximum(lines.slope_u, _expected_u(points, lines, settings))
+    slope_u = np.sqrt(scatter**2 + blank**2 + cell**2)
     shared = np.sqrt((settings.stock_relative_u or 0.0) ** 2 + settings.path_length_relative_u**2)
     combined = np.sqrt(slope_u**2 + (shared * lines.slope) ** 2)
     with np.errstate(divide="ignore", invalid="ignore"):
         # Welch and Satterthwaite: only the scatter has few degrees of freedom
-        degrees = np.where(lines.slope_u > 0, lines.degrees_of_freedom * (combined / lines.slope_u) ** 4, np.inf)
+        degrees = np.where(scatter > 0, lines.degrees_of_freedom * (combined / scatter) ** 4, np.inf)
         half = t_quantile(0.975, degrees) * combined
     return Spread(
         stock_relative_u=settings.stock_relative_u,
@@ -105,7 +106,8 @@ def _series_scatter(points: Series, scores: Scores, settings: StandardsSettings)
             return None, "scatter", None
         # Component uncertainties are used as of a normal distribution: few degrees of freedom are paid for here
         wider = float(t_quantile(0.975, degrees)) / 1.959964
-        return float(line.slope_u[0]) / slope * wider, "scatter", None
+        # a scatter smaller than noise, cell and the dilution taken for it is luck
+        return max(float(line.slope_u[0]) / slope * wider, declared), "scatter", None
     if degrees <= 0:
         return declared, "declared", None
     chi_square = float((line.residual[:, 0] ** 2 * np.where(line.weight[:, 0] > 0, scores.weight, 0.0)).sum())
@@ -114,6 +116,14 @@ def _series_scatter(points: Series, scores: Scores, settings: StandardsSettings)
         return declared, "declared", probability
     wider = float(t_quantile(0.975, degrees)) / 1.959964  # the ratio is estimated from few degrees of freedom
     return declared * float(np.sqrt(chi_square / degrees)) * wider, "declared, enlarged", probability  # Birge's ratio
+
+
+def _expected_u(points: Series, lines: Lines, settings: StandardsSettings) -> FloatArray:
+    """Standard error of the slopes by noise, cell and dilution as taken, (m,); nan where the scatter has no degree of freedom."""
+    slope = np.nan_to_num(lines.slope)
+    variance = reading_variance(points, lines.intercept + points.amount[:, None] * slope, settings)
+    variance = variance + settings.model_error_absorbance**2 + (points.amount_u[:, None] * slope) ** 2
+    return np.where(lines.degrees_of_freedom > 0, np.sqrt((lines.share**2 * variance).sum(axis=0)), np.nan)
 
 
 def _blank_part(points: Series, lines: Lines, settings: StandardsSettings) -> FloatArray:
