@@ -142,9 +142,8 @@ def mixture(name: str, a: float, b: float) -> dict[str, Any]:
     return {"id": name, "concentrations": {"a": a, "b": b}, "wavelength_nm": W.tolist(), "absorbance": A.tolist()}
 
 
-MIXTURES = [
-    mixture(f"m{k}", a, b) for k, (a, b) in enumerate([(5, 5), (10, 5), (5, 10), (15, 5), (5, 15), (10, 10), (15, 15), (12, 8)])
-]
+COMPOSITIONS = [(5, 5), (10, 5), (5, 10), (15, 5), (5, 15), (10, 10), (15, 15), (12, 8)]
+MIXTURES = [mixture(f"m{k}", a, b) for k, (a, b) in enumerate(COMPOSITIONS)]
 
 
 def mixtures(rows: list[dict[str, Any]], **changes: Any) -> dict[str, Any]:
@@ -209,3 +208,13 @@ def test_path_lengths_of_mixtures_count() -> None:
 def test_fewer_wavelengths_than_components_are_refused() -> None:
     narrow = [{**m, "wavelength_nm": [550.0], "absorbance": m["absorbance"][25:26]} for m in MIXTURES]
     assert faults(mixtures(narrow), "mixtures") == {"$.mixtures": "too-few-wavelengths"}
+
+
+def test_components_of_one_shape_are_said_to_be_alike() -> None:
+    def twin(name: str, a: float, b: float) -> dict[str, Any]:
+        A = E * (a + 2 * b) / 1000 + 0.0003 * RNG.normal(size=W.size)
+        return {"id": name, "concentrations": {"a": a, "b": b}, "wavelength_nm": W.tolist(), "absorbance": A.tolist()}
+
+    response = run_document("mixtures", mixtures([twin(f"m{k}", a, b) for k, (a, b) in enumerate(COMPOSITIONS[:6])]))
+    assert "collinear" in [f["code"] for f in response["flags"]]
+    assert "standard-off-the-curve" not in [f["code"] for f in response["flags"]]

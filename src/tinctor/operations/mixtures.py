@@ -210,6 +210,9 @@ def _flags(request: MixturesRequest, result: MixtureCalibration, names: tuple[st
             words = ", ".join(f"{names[j]} stated {_shown(request, result, k, j)}" for j in off)
             message = f"{m.id!r} does not show what is stated: {words} (studentised beyond {result.studentised_limit:.1f})"
             flags.append(NoteOut(code="standard-off-the-curve", severity="warning", message=message, standards=[m.id]))
+    if result.alike:
+        message = "the spectra found are nearly the same: labels were not looked at, and a fit can hardly tell them apart"
+        flags.append(NoteOut(code="collinear", severity="warning", message=message))
     missing = [name for name in names if name not in request.stock_relative_u]
     if missing:
         message = f"stock_relative_u is not stated for {quoted(missing)}: the scale uncertainty is not known without it"

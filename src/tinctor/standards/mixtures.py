@@ -16,6 +16,8 @@ __all__ = ["MixtureCalibration", "calibrate_mixtures"]
 
 #: Variance inflation of a component's amounts beyond which the compositions hardly tell it from the others (common practice).
 WEAK_DESIGN: Final = 10.0
+#: Condition of the spectra found beyond which their apparent amounts say nothing about single labels.
+ALIKE: Final = 100.0
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -44,6 +46,8 @@ class MixtureCalibration:
         Externally studentised difference of apparent and stated amounts.
     studentised_limit : float
         Bonferroni limit at 5 %.
+    alike : bool
+        The spectra found are so alike that no label was looked at.
     """
 
     absorptivity: FloatArray
@@ -59,6 +63,7 @@ class MixtureCalibration:
     scale_relative_u: FloatArray
     studentised: FloatArray
     studentised_limit: float
+    alike: bool
 
 
 def calibrate_mixtures(
@@ -115,6 +120,9 @@ def calibrate_mixtures(
     offset = coefficients[p] if fitted_intercept else np.zeros(absorbance.shape[1])
     apparent: FloatArray = np.linalg.lstsq(E.T, (absorbance - offset).T, rcond=None)[0].T.astype(np.float64)
     studentised, scale = _scatter(apparent, amounts, leverage, degrees, (Rinv @ Q.T)[:p])
+    alike = float(np.linalg.cond(E / np.maximum(np.sqrt((E**2).sum(axis=1)), np.finfo(float).tiny)[:, None])) > ALIKE
+    if alike:  # the spectra cannot say which component a difference belongs to
+        studentised = np.zeros_like(studentised)
     unit = X / np.sqrt((X**2).sum(axis=0))
     sizes = np.linalg.svd(unit, compute_uv=False)
     centred = X[:, :p] - X[:, :p].mean(axis=0) if fitted_intercept else X[:, :p]
@@ -132,6 +140,7 @@ def calibrate_mixtures(
         scale_relative_u=scale,
         studentised=studentised,
         studentised_limit=float(t_quantile(1.0 - 0.05 / (2.0 * n * p), float(max(degrees - 1, 1)))),
+        alike=alike,
     )
 
 
