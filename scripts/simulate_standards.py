@@ -11,6 +11,7 @@ all drawn from what is declared. For 3, 5 and 8 standards, with and without repl
     inverse        95 % interval of an unknown, by one wavelength and by the whole spectrum: 93 to 97 %
     size           linearity test at 5 % on straight series: rejects 4 to 6 %
     power          how often it rejects, by how much the top standard lies below the line (no requirement)
+    not stated     dilution errors that nobody stated, estimated from the scatter: at least 90 %
     undeclared     stock error not declared: must fail
 
 Short versions run in tests/truth/test_standards_simulated.py.
@@ -86,25 +87,32 @@ def reading(amount: float, rng: np.random.Generator, bend: float = 0.0) -> np.nd
     return A + NOISE.reading_u(A) * rng.normal(size=A.shape)
 
 
-def series(levels: tuple[float, ...], rng: np.random.Generator, bend: float = 0.0) -> list[Standard]:
+def series(levels: tuple[float, ...], rng: np.random.Generator, bend: float = 0.0, *, stated: bool = True) -> list[Standard]:
     """A dilution series from one stock."""
     stock = 1.0 + STOCK_U * rng.normal()
     scans = []
     for k, c in enumerate(levels):
         true = c * stock * (1.0 + DILUTION_U * rng.normal())
-        scans.append(Standard(Spectrum(f"s{k}", W, reading(true, rng, bend)), c, DILUTION_U * c))
+        scans.append(Standard(Spectrum(f"s{k}", W, reading(true, rng, bend)), c, DILUTION_U * c if stated else None))
     return scans
 
 
 def results(
-    levels: tuple[float, ...], intercept: str, count: int, seed: int, *, declared: bool = True, blank: bool = False
+    levels: tuple[float, ...],
+    intercept: str,
+    count: int,
+    seed: int,
+    *,
+    declared: bool = True,
+    blank: bool = False,
+    stated: bool = True,
 ) -> list[tuple[float, ...]]:
     """Whether interval at the maximum, scale, one-wavelength and whole-spectrum inverse hold the truth, for each series."""
     rng = np.random.default_rng([seed, len(levels), INTERCEPTS.index(intercept)])
     chosen = settings(intercept, declared=declared)
     found = []
     for _ in range(count):
-        made = series_of(series(levels, rng), [Spectrum("blank", W, reading(0.0, rng))] if blank else [])
+        made = series_of(series(levels, rng, stated=stated), [Spectrum("blank", W, reading(0.0, rng))] if blank else [])
         found.append((*_record_holds(characterise(made, chosen)), *_inverse_holds(made, chosen, rng)))
     return found
 
@@ -148,6 +156,10 @@ def coverage(count: int, seed: int) -> list[Outcome]:
         held = np.mean(results(LEVELS["5 levels"], intercept, count, seed, blank=True), axis=0)
         for what, share in zip(WHAT, held, strict=True):
             outcomes.append(Outcome(f"5 levels and a blank, intercept {intercept}: {what}", float(share), 0.93, 0.97, count))
+    for name in ("5 levels", "8 levels"):
+        held = np.mean(results(LEVELS[name], "zero", count, seed, stated=False), axis=0)
+        for what, share in zip(WHAT, held, strict=True):
+            outcomes.append(Outcome(f"{name}, dilution not stated: {what}", float(share), 0.9, 1.0, count))
     held = np.mean(results(LEVELS["5 levels"], "zero", count, seed, declared=False), axis=0)
     outcomes.append(Outcome("5 levels, stock error undeclared: scale of the record", float(held[1]), 0.0, 0.85, count))
     return outcomes
