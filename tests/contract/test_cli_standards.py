@@ -213,3 +213,14 @@ def test_standard_addition_from_files(tmp_path: Path) -> None:
     (row,) = csv.DictReader(io.StringIO(done.stdout))
     assert float(row["low"]) < 12.0 < float(row["high"])
     assert "no-blank" in tinctor(*command, "-f", "csv").stdout
+
+
+def test_the_component_of_a_response_goes_into_resolve_as_it_is() -> None:
+    component = json.loads(tinctor("standards", *NAMED, "-f", "json").stdout)["component"]
+    spectrum = json.loads(tinctor(*DETERMINE, "--request").stdout)["unknowns"][0]
+    request = {"schema": "resolve/1", "components": [component], "concentration_unit": "mg/L", "spectra": [spectrum]}
+    done = subprocess.run(
+        [sys.executable, "-m", "tinctor", "json", "resolve"], input=json.dumps(request), capture_output=True, text=True, check=True
+    )
+    (found,) = json.loads(done.stdout)["results"][0]["components"]
+    assert abs(found["concentration"] - 21.37) < 3 * found["u"]
