@@ -218,3 +218,16 @@ def test_components_of_one_shape_are_said_to_be_alike() -> None:
     response = run_document("mixtures", mixtures([twin(f"m{k}", a, b) for k, (a, b) in enumerate(COMPOSITIONS[:6])]))
     assert "collinear" in [f["code"] for f in response["flags"]]
     assert "standard-off-the-curve" not in [f["code"] for f in response["flags"]]
+
+
+def test_scatter_of_the_standards_is_in_the_unknown_whatever_was_declared() -> None:
+    wild = [
+        {**s, "absorbance": (np.array(s["absorbance"]) * (1 + 0.02 * (-1) ** k)).tolist(), "concentration_u": 0.001}
+        for k, s in enumerate(STANDARDS)
+    ]
+    (declared,) = run_document("determine", request(spectrum("u", 20.0), standards=wild, intercept="zero"))["results"]
+    assert declared["u"] > 0.01 * 20.0
+    exact = [{**s, "absorbance": (E * s["concentration"] / 1000).tolist()} for s in STANDARDS]
+    (lucky,) = run_document("determine", request(spectrum("u", 20.0), standards=exact, intercept="zero"))["results"]
+    # 0.3 % of dilution for each of six standards, and 0.3 % of the stock
+    assert lucky["u"] > 1.1 * 0.003 * 20.0
