@@ -15,7 +15,7 @@ from tinctor.library.check import CheckFinding, check_collection
 from tinctor.library.collection import COLLECTION_FILE
 from tinctor.library.record import NAME, Record, load_record
 
-__all__ = ["add_record", "create_collection", "record_toml"]
+__all__ = ["add_record", "component_csv", "create_collection", "record_toml"]
 
 #: A record's own maximum, written down so that a damaged file is noticed.
 GUARD_TOLERANCE = 1e-6
@@ -67,7 +67,7 @@ def add_record(folder: Path, document: dict[str, Any], component: Component) -> 
         document = {**document, "check_points": [_guard(component)]}
     written: list[Path] = []
     try:
-        for path, text in ((csv, _csv(component)), (toml, record_toml(document))):
+        for path, text in ((csv, component_csv(component)), (toml, record_toml(document))):
             _write_new(path, text)
             written.append(path)
         record = load_record(toml, folder.resolve().name)
@@ -135,7 +135,8 @@ def _guard(component: Component) -> dict[str, Any]:
     }
 
 
-def _csv(component: Component) -> str:
+def component_csv(component: Component) -> str:
+    """Return a component's spectrum as it stands in a record's CSV file, every number with all its digits."""
     columns: list[FloatArray] = [component.wavelength_nm, component.absorptivity]
     if component.absorptivity_u is not None:
         columns.append(component.absorptivity_u)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from tinctor.library import Collection, Record
+from tinctor.library.add import component_csv
 
 __all__ = ["collection_lines", "record_csv", "record_document", "record_lines"]
 
@@ -70,8 +71,4 @@ def record_document(record: Record) -> dict[str, Any]:
 
 def record_csv(record: Record) -> str:
     """Return the record's spectrum as it stands in its CSV file."""
-    c = record.component
-    columns = [c.wavelength_nm, c.absorptivity, *([c.absorptivity_u] if c.absorptivity_u is not None else [])]
-    header = ["wavelength_nm", f"{c.basis}_absorptivity", "absorptivity_u"][: len(columns)]
-    rows = [",".join(repr(float(value)) for value in row) for row in zip(*columns, strict=True)]
-    return "\n".join([",".join(header), *rows]) + "\n"
+    return component_csv(record.component)
