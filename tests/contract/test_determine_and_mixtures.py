@@ -231,3 +231,22 @@ def test_scatter_of_the_standards_is_in_the_unknown_whatever_was_declared() -> N
     (lucky,) = run_document("determine", request(spectrum("u", 20.0), standards=exact, intercept="zero"))["results"]
     # 0.3 % of dilution for each of six standards, and 0.3 % of the stock
     assert lucky["u"] > 1.1 * 0.003 * 20.0
+
+
+def test_a_blank_on_other_wavelengths_is_refused_in_standard_addition_too() -> None:
+    added = [spectrum(f"a{k}", 6.0 + 4.0 * k, concentration=4.0 * k) for k in range(5)]
+    document = {k: v for k, v in request(standards=added, design="addition").items() if k != "unknowns"}
+    blank = spectrum("blank", 0.0)
+    for w, A in ((W + 200, blank["absorbance"]), (W[:25], blank["absorbance"][:25])):
+        wrong = {**blank, "wavelength_nm": w.tolist(), "absorbance": A}
+        assert faults({**document, "blank": [wrong]}) == {"$.blank[0].wavelength_nm": "axes-differ"}
+    assert faults({**document, "wavelength_range_nm": [500.0, 600.0]}) == {"$.wavelength_range_nm": "range-with-addition"}
+
+
+def test_replicates_of_two_samples_are_flagged_and_a_share_is_below_one() -> None:
+    document = request(spectrum("u", 5.3), spectrum("v", 10.7, replicate_of="u"))
+    (found,) = run_document("determine", document)["results"]
+    assert "replicates-differ" in [f["code"] for f in found["flags"]]
+    (sound,) = run_document("determine", request(spectrum("u", 5.3), spectrum("v", 5.3, replicate_of="u")))["results"]
+    assert "replicates-differ" not in [f["code"] for f in sound["flags"]]
+    assert faults(request(spectrum("u", 5.0), stock_relative_u=40.0)) == {"$.stock_relative_u": "not-a-share"}

@@ -125,7 +125,8 @@ def determine(
         from tinctor.report.determine_text import determine_csv, determine_table
 
         s.put_response(response, output_format, output, determine_table, determine_csv)
-        if strict and any(result.status != "accepted" for result in response.results):
+        warned = any(flag.severity == "warning" for flag in response.flags)
+        if strict and (warned or any(result.status != "accepted" for result in response.results)):
             raise typer.Exit(Exit.DONE_WITH_FLAGS)
 
 

@@ -31,6 +31,9 @@ __all__ = ["DetermineRequest", "DetermineResponse", "run"]
 
 Schema = Literal["determine/1"]
 
+#: Replicates that scatter by more than so many times what one reading's share of the uncertainty allows are not of one sample.
+REPLICATES_DIFFER = 4.0
+
 
 class DetermineRequest(SeriesIn):
     """Read the concentration of unknowns off the line of the standards."""
@@ -176,6 +179,11 @@ def _by_addition(request: DetermineRequest) -> Addition:
             "$.unknowns",
             "in the design addition the sample is among the standards (concentration 0), found unknowns as well",
         )
+    if request.wavelength_range_nm is not None:
+        message = "standard addition reads one wavelength or the whole spectrum: a range is not taken"
+        raise InputError.single(
+            "range-with-addition", "$.wavelength_range_nm", message, "give wavelength_nm, or files of that range"
+        )
     paths = {s.path_length_cm for s in request.standards}
     if len(paths) > 1:
         raise InputError.single("paths-differ", "$.standards", f"additions must share one path length, found {sorted(paths)} cm")
@@ -280,6 +288,9 @@ def _unknown_flags(u: Unknown, determination: Determination) -> list[NoteOut]:
             "another absorber, aggregation or turbidity may bias it"
         )
         flags.append(NoteOut(code="unmodelled-absorber", severity="warning", message=message, wavelength_nm=[u.departure[0]]))
+    if u.replicate_sd is not None and u.u is not None and u.replicate_sd > REPLICATES_DIFFER * u.u * u.replicates**0.5:
+        message = "its replicates differ by far more than the uncertainty of their mean allows: are they one sample?"
+        flags.append(NoteOut(code="replicates-differ", severity="warning", message=message))
     if u.below_decision:
         message = f"below the decision limit ({determination.limits[0].definition}): not shown to be there"
         flags.append(NoteOut(code="below-decision-limit", severity="info", message=message))

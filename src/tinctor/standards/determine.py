@@ -15,7 +15,7 @@ from tinctor.standards.characterise import Characterisation, characterise
 from tinctor.standards.distributions import normal_quantile, t_quantile
 from tinctor.standards.inverse import CalibrationLine, Inverse, inverse_prediction, standard_addition
 from tinctor.standards.limits import Limits, blank_limits, calibration_limits, ich_limits, known_sigma_limits
-from tinctor.standards.series import Series, Standard, series_of
+from tinctor.standards.series import Series, Standard, same_axis, series_of
 from tinctor.standards.settings import StandardsSettings
 from tinctor.standards.signals import Signals
 
@@ -159,6 +159,9 @@ def determine_by_addition(
     settings = replace(settings or StandardsSettings(), intercept="fitted")
     series = series_of(measured, [*unspiked], absorbance_limit)
     if blanks:
+        placed = [(".standards[0]", measured[0].spectrum), *((f".blank[{k}]", b) for k, b in enumerate(blanks))]
+        if faults := same_axis(placed):
+            raise InputError(faults)
         blank = np.mean([b.absorbance for b in blanks], axis=0)
         series = replace(series, absorbance=series.absorbance - blank, blanks=series.blanks - blank)
     result = characterise(series if wavelength_nm is None else series.on(_only(series, wavelength_nm)), settings)

@@ -70,5 +70,9 @@ class StandardsSettings:
             value = getattr(self, name)
             if value is not None and not (math.isfinite(value) and value >= 0):
                 faults.append(Fault("negative", f".{name}", f"expected a number of at least 0, found {value!r}"))
+        for name in ("stock_relative_u", "path_length_relative_u"):
+            if (getattr(self, name) or 0.0) >= 1.0:
+                message = f"expected a share below 1 (0.005 is 0.5 %), found {getattr(self, name)!r}"
+                faults.append(Fault("not-a-share", f".{name}", message))
         if faults:
             raise InputError(faults)
