@@ -121,7 +121,7 @@ def _range_notes(result: Characterisation) -> Iterator[Note]:
 
 def _standard_notes(result: Characterisation) -> Iterator[Note]:
     whole = result.tests[0]
-    if whole.passed and whole.departure_relative > LARGE_SCATTER and not result.points.declared:
+    if whole.passed and whole.departure_relative > LARGE_SCATTER:
         message = (
             f"the standards lie up to {100 * whole.departure_relative:.2g} % off the line: so much scatter hides any curvature; "
             "look for exchanged labels and for faults of dilution"
