@@ -92,7 +92,7 @@ def determine(
             blank,
             options,
             schema="determine/1",
-            keep_zero=bool(additions),
+            zero_is_a_sample=bool(additions),
             design="addition" if additions else "external",
             concentration_unit=unit,
             wavelength_nm=wavelength_nm,

@@ -80,9 +80,11 @@ Strict = Annotated[bool, typer.Option("--strict", help="Exit with 5 when anythin
 
 
 def series_document(
-    files: list[str], sheet: Path, blank: str | None, options: ReadOptions, **settings: Any
+    files: list[str], sheet: Path, blank: str | None, options: ReadOptions, zero_is_a_sample: bool = False, **settings: Any
 ) -> tuple[dict[str, Any], list[str]]:
     """Return the part of a request that describes standards and blanks, and what the readers noticed.
+
+    A concentration of 0 is a blank, or the sample itself where standards are additions to it (`zero_is_a_sample`).
 
     Raises
     ------
@@ -99,7 +101,7 @@ def series_document(
     for row in rows:
         measured = {key: found[row.id][key] for key in ("id", "wavelength_nm", "absorbance")}
         values = given(path_length_cm=row.path_length_cm, replicate_of=row.replicate_of)
-        if row.concentration == 0 and row.replicate_of is None and not settings.get("keep_zero"):
+        if row.concentration == 0 and row.replicate_of is None and not zero_is_a_sample:
             blanks.append({**measured, **given(path_length_cm=row.path_length_cm)})
             continue
         standards.append({**measured, "concentration": row.concentration, **values, **given(concentration_u=row.concentration_u)})
@@ -107,7 +109,6 @@ def series_document(
         blank_spectra, more = read_all([blank], options)
         notes += more
         blanks += [document_of(s) for s in blank_spectra]
-    settings.pop("keep_zero", None)
     noise_floor = settings.pop("noise_floor", None)
     document = {**given(**settings), "standards": standards, "blank": blanks}
     if noise_floor is not None:
