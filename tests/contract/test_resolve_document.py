@@ -250,7 +250,7 @@ def test_error_bodies_have_their_fixed_keys_and_at_most_fifty_faults() -> None:
 
 
 def test_unknown_operations_are_refused() -> None:
-    with pytest.raises(InputError, match="one of determine mixtures resolve standards transfer"):
+    with pytest.raises(InputError, match="one of determine dilution mixtures overlap resolve standards transfer wavelengths"):
         operation("conjure")
 
 

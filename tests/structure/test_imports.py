@@ -34,13 +34,17 @@ DOMAIN = {"spectrum", "component", "noise", "arrays", "axis", "errors", "units",
 THIRD_PARTY = {
     "version": set(), "errors": set(), "units": set(), "arrays": {"numpy"}, "axis": {"numpy"}, "noise": {"numpy"},
     "spectrum": {"numpy"}, "component": {"numpy"}, "files": {"numpy"}, "library": {"numpy", "pydantic"},
-    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "operations": {"numpy", "pydantic", "scipy"},
-    "report": set(),
+    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "plan": {"numpy"}, "operations": {"numpy", "pydantic", "scipy"},
+    "report": {"matplotlib"},
     "cli": {"typer", "click"}, "__main__": set(), "__init__": set(),
 }  # fmt: skip
 
 #: Modules that alone may import a package.
-ONE_HOME = {"threadpoolctl": {"resolve/threads.py"}, "scipy": {"standards/distributions.py", "operations/provenance.py"}}
+ONE_HOME = {
+    "threadpoolctl": {"resolve/threads.py"},
+    "matplotlib": {"report/charts.py"},
+    "scipy": {"standards/distributions.py", "operations/provenance.py"},
+}
 
 
 def modules() -> list[Path]:

@@ -19,10 +19,13 @@ __all__ = ["OPERATIONS", "Operation", "dumped", "operation", "run_checked", "run
 #: Operations by name, with the module that holds each: loaded when it is used.
 OPERATIONS: Final[dict[str, str]] = {
     "determine": "tinctor.operations.determine",
+    "dilution": "tinctor.operations.dilution",
     "mixtures": "tinctor.operations.mixtures",
+    "overlap": "tinctor.operations.overlap",
     "resolve": "tinctor.operations.resolve",
     "standards": "tinctor.operations.standards",
     "transfer": "tinctor.operations.transfer",
+    "wavelengths": "tinctor.operations.wavelengths",
 }
 
 

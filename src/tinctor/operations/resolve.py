@@ -7,20 +7,18 @@ from typing import Annotated, Any, Literal
 
 from pydantic import Field
 
-from tinctor.component import Component, Conditions
+from tinctor.component import Conditions
 from tinctor.errors import InputError
-from tinctor.library import load_collection
+from tinctor.operations.components_in import components_of, units_of
 from tinctor.operations.provenance import Provenance, provenance
 from tinctor.operations.resolve_response import response_results
 from tinctor.operations.resolve_results import SpectrumResult
 from tinctor.operations.shared import (
     ComponentChoice,
-    ComponentIn,
     ConditionsIn,
     NoiseIn,
     Number,
     Numbers,
-    RecordUsed,
     RequestModel,
     ResponseModel,
     SpectrumIn,
@@ -30,7 +28,6 @@ from tinctor.resolve.engine import resolve
 from tinctor.resolve.resolution import Resolution
 from tinctor.resolve.settings import JudgementLimits, ResolveSettings
 from tinctor.spectrum import Spectrum, SpectrumBatch
-from tinctor.units import BASE_UNIT, check_unit, conversion_factor
 
 __all__ = ["ResolveRequest", "ResolveResponse", "run"]
 
@@ -94,12 +91,12 @@ def run(request: ResolveRequest) -> ResolveResponse:
     settings, components_and_records, spectra = gather(
         [
             ("$", lambda: _settings(request)),
-            ("$", lambda: _components(request)),
+            ("$", lambda: components_of(request.components, request.library)),
             ("$", lambda: _spectra(request)),
         ]
     )
     components, records = components_and_records
-    units, factors = _units(request.concentration_unit, components)
+    units, factors = units_of(request.concentration_unit, components)
     results: list[SpectrumResult | None] = [None] * len(spectra)
     for places in _by_axis(spectra):
         batch = SpectrumBatch.of([spectra[k] for k in places])
@@ -141,31 +138,6 @@ def _limits(model_error: ModelErrorIn) -> JudgementLimits:
     return JudgementLimits(model_error_relative=model_error.relative, model_error_absorbance=model_error.absorbance)
 
 
-def _components(request: ResolveRequest) -> tuple[list[Component], list[RecordUsed]]:
-    by_name = [choice for choice in request.components if isinstance(choice, str)]
-    if by_name and request.library is None:
-        raise InputError.single(
-            "no-library",
-            ".library",
-            f"components are named ({by_name[0]!r}) and no library is given",
-            "name a collection, or give them inline",
-        )
-    collection = load_collection(request.library) if by_name and request.library else None
-    records: list[RecordUsed] = []
-
-    def make(choice: str | ComponentIn) -> Component:
-        if isinstance(choice, ComponentIn):
-            return choice.to_component()
-        assert collection is not None
-        component = collection.component(choice)
-        record = collection.records[choice]
-        records.append(RecordUsed(name=choice, record=record.reference, sha256=record.sha256, caution=record.file.caution))
-        return component
-
-    parts = [(f".components[{k}]", lambda choice=choice: make(choice)) for k, choice in enumerate(request.components)]
-    return gather(list(parts)), records
-
-
 def _spectra(request: ResolveRequest) -> list[Spectrum]:
     spectra = gather([(f".spectra[{k}]", spectrum.to_spectrum) for k, spectrum in enumerate(request.spectra)])
     first: dict[str, int] = {}
@@ -176,20 +148,6 @@ def _spectra(request: ResolveRequest) -> list[Spectrum]:
             "duplicate-id", f".spectra[{k}].id", f"ids must differ, found {spectrum.id!r} more than once", "rename the samples"
         )
     return spectra
-
-
-def _units(unit: str | None, components: list[Component]) -> tuple[tuple[str, ...], tuple[float, ...]]:
-    """The unit of each component and how many of it make one base unit."""
-    if unit is not None:
-        check_unit(unit)
-    units = tuple(unit or BASE_UNIT[c.basis] for c in components)
-    factors = gather(
-        [
-            ("$", lambda c=c, unit=unit: conversion_factor(c.basis, unit, c.molar_mass_g_per_mol, c.name))
-            for c, unit in zip(components, units, strict=True)
-        ]
-    )
-    return units, tuple(factors)
 
 
 def _by_axis(spectra: list[Spectrum]) -> list[list[int]]:

@@ -19,7 +19,15 @@ from tinctor.component import Component
 from tinctor.errors import InputError
 from tinctor.resolve.settings import ResolveSettings
 
-__all__ = ["Design", "build_design", "median_step", "orthonormal_factors", "usable_wavelengths"]
+__all__ = [
+    "Design",
+    "build_design",
+    "condition_number",
+    "dependent_components",
+    "median_step",
+    "orthonormal_factors",
+    "usable_wavelengths",
+]
 
 #: A unit column this close to the span of those before it is dependent on them to the precision of float64.
 DEPENDENT = 1e-9
@@ -80,6 +88,21 @@ class Design:
     def asked(self) -> int:
         """Number of coefficients asked for, dependent ones and the shift included: so many readings are needed."""
         return int(self.X.shape[1]) + int(self.shift)
+
+    def of(self, places: Sequence[int]) -> Design:
+        """Return the design with some of the components only, factored anew."""
+        some = list(places)
+        X = np.column_stack([self.X[:, some], self.X[:, self.p :]])
+        parts = (self.slope[:, some], self.curvature[:, some], self.shape_variance[:, some])
+        return _factored(tuple(self.names[k] for k in some), self.terms, self.wavelength_nm, X, *parts, self.shift)
+
+    def with_background(self, background: Sequence[str]) -> Design:
+        """Return the design with other background terms, factored anew."""
+        terms = tuple(term for term in background if term != "shift")
+        X = np.column_stack([self.X[:, : self.p], *(_background_shape(term, self.wavelength_nm) for term in terms)])
+        return _factored(
+            self.names, terms, self.wavelength_nm, X, self.slope, self.curvature, self.shape_variance, "shift" in background
+        )
 
     def on(self, keep: np.ndarray) -> Design:
         """Return the design restricted to the wavelengths where `keep` is true, factored anew."""
@@ -171,6 +194,25 @@ def orthonormal_factors(X: FloatArray) -> tuple[FloatArray, FloatArray, np.ndarr
     kept = np.flatnonzero(independent)
     Rinv[kept] = np.linalg.inv(R[:r, kept]) / norm[kept, None] if r else np.zeros((0, 0))
     return (np.column_stack(basis) if r else np.zeros((m, 0))), Rinv, independent
+
+
+def condition_number(design: Design) -> float:
+    """Return the ratio of the largest to the smallest singular value of the independent columns at unit norm."""
+    unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
+    sizes = np.linalg.svd(unit[:, design.independent], compute_uv=False)
+    return float(sizes[0] / sizes[-1]) if sizes.size else np.nan
+
+
+def dependent_components(design: Design) -> np.ndarray:
+    """Return which component columns are in an exact linear dependence: the left-out ones and those they are made of; bool (p,)."""
+    p = design.p
+    involved = ~design.independent & design.X.any(axis=0)
+    unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
+    kept = np.flatnonzero(design.independent)
+    for k in np.flatnonzero(involved):
+        weights = np.linalg.lstsq(unit[:, kept], unit[:, k], rcond=None)[0]
+        involved[kept[np.abs(weights) > 1e-6]] = True
+    return np.asarray(involved[:p])
 
 
 def _orthogonalised(column: FloatArray, basis: list[FloatArray]) -> tuple[FloatArray, FloatArray]:

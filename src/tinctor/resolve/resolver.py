@@ -12,7 +12,7 @@ import numpy as np
 from tinctor.arrays import FloatArray
 from tinctor.component import Component
 from tinctor.noise import NoiseModel
-from tinctor.resolve.design import Design
+from tinctor.resolve.design import Design, condition_number, dependent_components
 from tinctor.resolve.fit import FitBlock, FitColumns, fit_columns, fit_rows
 from tinctor.resolve.interferent import Interferent, interferent
 from tinctor.resolve.interval import non_negative_interval
@@ -81,8 +81,8 @@ class Resolver:
         m = design.wavelength_nm.size
         self.determined = m > 0 and design.asked <= m
         self.interferent: Interferent | None = interferent(design) if self.determined else None
-        self.condition = _condition(design) if self.determined else np.nan
-        self.dependent = _dependent_components(design)
+        self.condition = condition_number(design) if self.determined else np.nan
+        self.dependent = dependent_components(design)
         E = design.X[:, : design.p]
         self.clear = (np.abs(E) <= CLEAR_SHARE * E.max(axis=0, initial=0.0)).all(axis=1)
 
@@ -255,25 +255,6 @@ def _undetermined(context: Resolver, n: int, points: float) -> Part:
     grade = np.full(n, Severity.REFUSAL, dtype=np.int8)
     result["severity"] = {"too-few-points": grade}
     return result
-
-
-def _condition(design: Design) -> float:
-    """Ratio of the largest to the smallest singular value of the independent columns at unit norm."""
-    unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
-    sizes = np.linalg.svd(unit[:, design.independent], compute_uv=False)
-    return float(sizes[0] / sizes[-1]) if sizes.size else np.nan
-
-
-def _dependent_components(design: Design) -> np.ndarray:
-    """Component columns in an exact linear dependence: the left-out ones and those they are made of."""
-    p = design.p
-    involved = ~design.independent & design.X.any(axis=0)
-    unit = design.X / np.maximum(np.sqrt((design.X**2).sum(axis=0)), np.finfo(float).tiny)
-    kept = np.flatnonzero(design.independent)
-    for k in np.flatnonzero(involved):
-        weights = np.linalg.lstsq(unit[:, kept], unit[:, k], rcond=None)[0]
-        involved[kept[np.abs(weights) > 1e-6]] = True
-    return np.asarray(involved[:p])
 
 
 def _standardised_residual(design: Design, readings: Readings, coordinates: FloatArray, noise: NoiseModel) -> FloatArray:

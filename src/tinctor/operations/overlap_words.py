@@ -1,0 +1,71 @@
+"""The answer on overlap in words."""
+
+from __future__ import annotations
+
+from typing import Final
+
+import numpy as np
+
+from tinctor.arrays import quoted
+from tinctor.plan.groups import Group
+from tinctor.plan.overlap import Overlap
+
+__all__ = ["group_words", "summary"]
+
+#: A sum whose error in other proportions stays below this is a sum.
+SUM_HOLDS: Final = 0.02
+#: ... and above this it is none.
+NO_SUM: Final = 0.2
+
+
+def summary(answer: Overlap) -> str:
+    """Return the answer in one or two sentences: yes or no where there is a target, and which component is in the way."""
+    names, target = answer.sample.names, answer.sample.settings.target_relative_u
+    words = {
+        word: [n for n, v in zip(names, answer.verdicts, strict=True) if v.word == word] for word in ("inseparable", "marginal")
+    }
+    if target is not None:
+        missed = [n for n, v in zip(names, answer.verdicts, strict=True) if v.target_met is False]
+        said = f"Yes: every component is expected within {100 * target:.3g} %." if not missed else (
+            f"No: {quoted(missed)} would miss {100 * target:.3g} %."
+        )  # fmt: skip
+    elif words["inseparable"]:
+        said = f"No: {quoted(words['inseparable'])} cannot be told apart as planned."
+    elif words["marginal"]:
+        said = f"Barely: {quoted(words['marginal'])} can be told from the others with little to spare."
+    else:
+        said = f"Yes: all {len(names)} components can be told apart."
+    return " ".join(filter(None, [said, _in_the_way(answer)]))
+
+
+def _in_the_way(answer: Overlap) -> str:
+    """Which single component makes it impossible, if leaving one out makes the rest possible."""
+    names = answer.sample.names
+    with_target = answer.sample.settings.target_relative_u is not None
+    alone = [
+        names[part.place]
+        for part in answer.left_out
+        if part.verdicts and all((v.target_met is not False) if with_target else v.word == "separable" for v in part.verdicts)
+    ]
+    if not answer.left_out:
+        return ""
+    if not alone:
+        return "Leaving out one component would not do."
+    return (
+        f"Without {alone[0]!r} the rest would do." if len(alone) == 1 else f"Without any one of {quoted(alone)} the rest would do."
+    )
+
+
+def group_words(answer: Overlap, group: Group) -> str:
+    """Return what can be reported of a group."""
+    members = quoted([answer.sample.names[k] for k in group.places])
+    if not np.isfinite(group.relative_u):
+        return f"{members} cannot be told apart, and have no sum: leave one out, or separate them first"
+    words = f"{members} can only be reported as a sum, expected within {100 * group.relative_u:.2g} % in the planned proportions"
+    error = group.proportion_error
+    if error <= SUM_HOLDS:
+        return f"{words}, and within {100 * error:.1g} % of that in any other"
+    if error <= NO_SUM:
+        return f"{words}; in others it is off by up to {100 * error:.2g} %"
+    only = f"their sum holds in the planned proportions only (off by up to {100 * error:.2g} % in others)"
+    return f"{members} cannot be told apart, and {only}"

@@ -1,0 +1,1 @@
+"""Before measuring: overlap, wavelengths, dilution. Numbers only."""
