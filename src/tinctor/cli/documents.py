@@ -13,7 +13,12 @@ from tinctor.cli.output import put
 
 __all__ = ["run_json", "show_schema"]
 
-OperationName = Annotated[str, typer.Argument(help="Name of the operation: resolve, standards, determine, mixtures, transfer.")]
+OperationName = Annotated[
+    str,
+    typer.Argument(
+        help="Name of the operation: resolve, overlap, wavelengths, dilution, standards, determine, mixtures, transfer."
+    ),
+]
 
 
 def run_json(operation: OperationName) -> None:

@@ -12,6 +12,7 @@ from tinctor.cli import documents, library
 from tinctor.cli.determine import EPILOG as DETERMINE_EPILOG
 from tinctor.cli.determine import TRANSFER_EPILOG, determine, transfer
 from tinctor.cli.output import speak_utf8
+from tinctor.cli.plan import DILUTION_EPILOG, OVERLAP_EPILOG, WAVELENGTHS_EPILOG, dilution, overlap, wavelengths
 from tinctor.cli.resolve import EPILOG, resolve
 from tinctor.cli.standards import EPILOG as STANDARDS_EPILOG
 from tinctor.cli.standards import MIXTURES_EPILOG, mixtures, standards
@@ -33,6 +34,9 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
 )
 app.command("resolve", epilog=EPILOG)(resolve)
+app.command("overlap", epilog=OVERLAP_EPILOG)(overlap)
+app.command("wavelengths", epilog=WAVELENGTHS_EPILOG)(wavelengths)
+app.command("dilution", epilog=DILUTION_EPILOG)(dilution)
 app.command("standards", epilog=STANDARDS_EPILOG)(standards)
 app.command("determine", epilog=DETERMINE_EPILOG)(determine)
 app.command("mixtures", epilog=MIXTURES_EPILOG)(mixtures)

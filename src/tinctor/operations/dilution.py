@@ -97,14 +97,14 @@ def run(request: DilutionRequest) -> DilutionResponse:
     Examples
     --------
     >>> request = DilutionRequest.model_validate({
-    ...     "schema": "dilution/1", "background": [], "concentrations": {"Cu": 4.0, "Ni": 2.0}, "concentration_unit": "mol/L",
+    ...     "schema": "dilution/1", "background": [], "concentrations": {"Cu": 5.0, "Ni": 2.0}, "concentration_unit": "mol/L",
     ...     "components": [
     ...         {"name": "Cu", "wavelength_nm": [395, 810], "molar_absorptivity": [0.2, 12.0], "scale_relative_u": 0.01},
     ...         {"name": "Ni", "wavelength_nm": [395, 810], "molar_absorptivity": [5.0, 1.0], "scale_relative_u": 0.01}],
     ... })
     >>> best = run(request).choices[0]
     >>> best.dilution_factor, [(v.pipette_ml, v.flask_ml) for v in best.volumes], round(best.highest_absorbance, 2)
-    (100.0, [(1.0, 100.0)], 0.5)
+    (100.0, [(5.0, 500.0)], 0.62)
     """
     plan = Plan.of(request, concentrations=_on_fibre(request))
     window = request.absorbance_window
@@ -134,8 +134,13 @@ def run(request: DilutionRequest) -> DilutionResponse:
         planned=planned_out(plan),
         spectra=spectra_out(plan, request.include_spectra),
         flags=planned_flags(plan, cell_is_chosen=True),
-        provenance=provenance(request, plan.records, plan.settings),
+        provenance=provenance(request, plan.records, {**plan.settings, **_asked(request)}),
     )
+
+
+def _asked(request: DilutionRequest) -> dict[str, object]:
+    names = ("cells_cm", "cell_relative_u", "absorbance_window", "pipettes_ml", "flasks_ml", "steps")
+    return {name: getattr(request, name) for name in names}
 
 
 def _on_fibre(request: DilutionRequest) -> dict[str, float] | None:

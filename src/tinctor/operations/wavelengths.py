@@ -153,8 +153,13 @@ def run(request: WavelengthsRequest) -> WavelengthsResponse:
         planned=planned_out(plan),
         spectra=spectra_out(plan, request.include_spectra),
         flags=[*planned_flags(plan), *_few_readings(choice)],
-        provenance=provenance(request, plan.records, plan.settings),
+        provenance=provenance(request, plan.records, {**plan.settings, **_asked(request)}),
     )
+
+
+def _asked(request: WavelengthsRequest) -> dict[str, object]:
+    names = ("count", "candidates_nm", "minimum_spacing_nm", "absorbance_window", "criterion", "wavelength_error_nm")
+    return {name: getattr(request, name) for name in names}
 
 
 def _relative(plan: Plan, choice: Choice) -> float | None:

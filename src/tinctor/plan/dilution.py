@@ -32,8 +32,8 @@ __all__ = [
 
 AbsorbanceWindow = tuple[float, float]
 
-#: Choices whose worst relative uncertainty is within this share of the best are as good; fewer steps and less volume decide.
-AS_GOOD: Final = 0.05
+#: Choices whose worst relative uncertainty is within this share of the best are as good (by judgement): fewer steps decide.
+AS_GOOD: Final = 0.2
 #: Choices looked at when two are sought.
 MOST_FOR_PAIRS: Final = 400
 #: More ways than this are not a bench.

@@ -32,6 +32,8 @@ FLASKS_ML: Final = (10.0, 25.0, 50.0, 100.0, 250.0, 500.0, 1000.0)
 
 #: Factors this close, relative, are the same.
 SAME_FACTOR: Final = 1e-9
+#: A dilution known this well adds nothing to what else is uncertain (by judgement): less volume is better than less uncertainty.
+NEGLIGIBLE_RELATIVE_U: Final = 0.002
 #: Volumes of glassware from one millilitre in a thousand to the largest flask made.
 VOLUME_LIMITS_ML: Final = (0.001, 20_000.0)
 
@@ -73,7 +75,7 @@ def volume_relative_u(volume_ml: float, tolerances: dict[float, float]) -> float
 
 def dilutions(pipettes_ml: Sequence[float], flasks_ml: Sequence[float], most_steps: int) -> list[Dilution]:
     """Return the dilutions that can be made, the undiluted sample first, by factor; for each factor the way with the fewest steps,
-    then the smallest uncertainty, then the least volume.
+    then the smallest uncertainty (all below 0.2 % are alike), then the least volume.
 
     Raises
     ------
@@ -111,7 +113,7 @@ def _dilution(steps: tuple[Step, ...]) -> Dilution:
 def _merit(d: Dilution) -> tuple[float, int, float, float, tuple[float, ...]]:
     # the factor rounded, so that 1/3 and 10/30 made in different ways are one
     volumes = tuple(v for step in d.steps for v in (step.pipette_ml, step.flask_ml))
-    return float(f"{d.factor:.9e}"), len(d.steps), round(d.relative_u, 9), d.flask_total_ml, volumes
+    return float(f"{d.factor:.9e}"), len(d.steps), max(round(d.relative_u, 9), NEGLIGIBLE_RELATIVE_U), d.flask_total_ml, volumes
 
 
 def _check(pipettes_ml: Sequence[float], flasks_ml: Sequence[float], most_steps: int) -> None:
