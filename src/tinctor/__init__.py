@@ -26,6 +26,11 @@ if TYPE_CHECKING:
     from tinctor.library import Collection, load_collection
     from tinctor.noise import NoiseModel
     from tinctor.operations.registry import run_document
+    from tinctor.plan.crossings import clear_windows, crossings
+    from tinctor.plan.dilution import DilutionAsked, choose_dilution
+    from tinctor.plan.overlap import overlap
+    from tinctor.plan.sample import PlannedSample, planned_sample
+    from tinctor.plan.wavelengths import WavelengthsAsked, choose_wavelengths
     from tinctor.resolve.engine import resolve as resolve_batch
     from tinctor.resolve.resolution import Resolution
     from tinctor.resolve.settings import ResolveSettings
@@ -39,8 +44,10 @@ __all__ = [
     "Collection",
     "Component",
     "Conditions",
+    "DilutionAsked",
     "InputError",
     "NoiseModel",
+    "PlannedSample",
     "Resolution",
     "ResolveSettings",
     "Spectrum",
@@ -49,10 +56,17 @@ __all__ = [
     "StandardsSettings",
     "TinctorError",
     "UndeterminedError",
+    "WavelengthsAsked",
     "__version__",
     "characterise_standards",
+    "choose_dilution",
+    "choose_wavelengths",
+    "clear_windows",
+    "crossings",
     "determine_unknowns",
     "load_collection",
+    "overlap",
+    "planned_sample",
     "read_spectra",
     "resolve_batch",
     "run_document",
@@ -63,8 +77,10 @@ _HOMES = {
     "Collection": "tinctor.library",
     "Component": "tinctor.component",
     "Conditions": "tinctor.component",
+    "DilutionAsked": "tinctor.plan.dilution",
     "InputError": "tinctor.errors",
     "NoiseModel": "tinctor.noise",
+    "PlannedSample": "tinctor.plan.sample",
     "Resolution": "tinctor.resolve.resolution",
     "ResolveSettings": "tinctor.resolve.settings",
     "Spectrum": "tinctor.spectrum",
@@ -73,9 +89,16 @@ _HOMES = {
     "StandardsSettings": "tinctor.standards.settings",
     "TinctorError": "tinctor.errors",
     "UndeterminedError": "tinctor.errors",
+    "WavelengthsAsked": "tinctor.plan.wavelengths",
     "characterise_standards": "tinctor.standards.characterise:characterise",
+    "choose_dilution": "tinctor.plan.dilution",
+    "choose_wavelengths": "tinctor.plan.wavelengths",
+    "clear_windows": "tinctor.plan.crossings",
+    "crossings": "tinctor.plan.crossings",
     "determine_unknowns": "tinctor.standards.determine:determine",
     "load_collection": "tinctor.library",
+    "overlap": "tinctor.plan.overlap",
+    "planned_sample": "tinctor.plan.sample",
     "read_spectra": "tinctor.files",
     "resolve_batch": "tinctor.resolve.engine:resolve",
     "run_document": "tinctor.operations.registry",

@@ -37,6 +37,9 @@ def test_the_commands_are_those_of_the_contract_so_far() -> None:
     assert set(COMMANDS) == {
         (),
         ("resolve",),
+        ("overlap",),
+        ("wavelengths",),
+        ("dilution",),
         ("standards",),
         ("determine",),
         ("mixtures",),

@@ -52,7 +52,7 @@ Examples:
 
 tinctor overlap -l palewater-dyehouse -c hollin-yellow,bramble-red,tarn-blue
 
-tinctor overlap -l palewater-dyehouse -c tarn-blue,fathom-navy --planned tarn-blue=8,fathom-navy=2 --unit mg/L --target-relative-u 0.02
+tinctor overlap -l palewater-dyehouse -c tarn-blue,fathom-navy --planned tarn-blue=0.008,fathom-navy=0.002 --target-relative-u 0.02
 
 tinctor overlap -l palewater-dyehouse -c bramble-red,sorrel-red,tarn-blue --plot overlap.svg
 
@@ -74,7 +74,7 @@ Examples:
 
 tinctor dilution -l palewater-dyehouse -c bramble-red,tarn-blue --planned bramble-red=0.55,tarn-blue=0.6 --unit g/L
 
-tinctor dilution -l palewater-dyehouse -c bramble-red,tarn-blue --on-fibre bramble-red=2,tarn-blue=0.5 --liquor-ratio 10 --cells-cm 0.2,1
+tinctor dilution -l palewater-dyehouse -c bramble-red,tarn-blue --on-fibre bramble-red=2,tarn-blue=0.5 --liquor-ratio 10
 
 Dyes and solvents can harm: dilute by their safety data sheets, never pipette by mouth, dispose by local rules.
 

@@ -104,6 +104,9 @@ def dilution_text(response: DilutionResponse) -> str:
     if response.more_choices:
         lines.append(f"and {response.more_choices} more that serve")
     lines += ["", "u: expected relative standard uncertainty; dilution from class A tolerances; - this choice does not serve"]
+    if response.together:
+        lines.append("readings above the window are left out where the absorbance goes beyond it")
+    lines.append("dyes and solvents can harm: dilute and dispose by their safety data sheets and local rules")
     return "\n".join([*lines, *_flags(response.flags)]) + "\n"
 
 
