@@ -34,7 +34,8 @@ DOMAIN = {"spectrum", "component", "noise", "arrays", "axis", "errors", "units",
 THIRD_PARTY = {
     "version": set(), "errors": set(), "units": set(), "arrays": {"numpy"}, "axis": {"numpy"}, "noise": {"numpy"},
     "spectrum": {"numpy"}, "component": {"numpy"}, "files": {"numpy"}, "library": {"numpy", "pydantic"},
-    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "plan": {"numpy"}, "operations": {"numpy", "pydantic", "scipy"},
+    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "plan": {"numpy"},
+    "operations": {"numpy", "pydantic", "scipy"},
     "report": {"matplotlib"},
     "cli": {"typer", "click"}, "__main__": set(), "__init__": set(),
 }  # fmt: skip

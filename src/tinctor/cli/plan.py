@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import sys
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Any, Literal
+from typing import Annotated, Any, Literal
 
 import typer
 
@@ -19,6 +19,7 @@ from tinctor.cli.plan_options import (
     FormatOption,
     Library,
     Names,
+    NoiseCorrelation,
     NoiseFloor,
     NoiseTransmittance,
     NoiseWavelength,
@@ -40,9 +41,6 @@ from tinctor.cli.plan_options import (
     window,
 )
 from tinctor.cli.reading import say
-
-if TYPE_CHECKING:
-    from pydantic import BaseModel
 
 __all__ = ["DILUTION_EPILOG", "OVERLAP_EPILOG", "WAVELENGTHS_EPILOG", "dilution", "overlap", "wavelengths"]
 
@@ -99,6 +97,7 @@ def overlap(
     noise_floor: NoiseFloor = None,
     noise_transmittance: NoiseTransmittance = None,
     noise_wavelength_nm: NoiseWavelength = None,
+    noise_correlation_nm: NoiseCorrelation = 0.0,
     target_relative_u: Target = None,
     plot: Plot = None,
     output_format: FormatOption = Format.TABLE,
@@ -114,7 +113,8 @@ def overlap(
         document = plan_document(
             "overlap/1", component, library, planned, unit, background, wavelengths_nm,
             wavelength_range_nm=list(range_nm) if range_nm else None, step_nm=step_nm, absorbance_limit=absorbance_limit,
-            noise=(noise_floor, noise_transmittance, noise_wavelength_nm), target_relative_u=target_relative_u,
+            noise=(noise_floor, noise_transmittance, noise_wavelength_nm), noise_correlation_nm=noise_correlation_nm,
+            target_relative_u=target_relative_u,
             path_length_cm=path_length_cm, path_length_u_cm=path_length_u_cm,
             dilution_factor=dilution_factor, dilution_factor_u=dilution_factor_u,
         )  # fmt: skip
@@ -153,6 +153,7 @@ def wavelengths(
     noise_floor: NoiseFloor = None,
     noise_transmittance: NoiseTransmittance = None,
     noise_wavelength_nm: NoiseWavelength = None,
+    noise_correlation_nm: NoiseCorrelation = 0.0,
     plot: Plot = None,
     output_format: FormatOption = Format.TABLE,
     output: Output = None,
@@ -164,7 +165,7 @@ def wavelengths(
         document = plan_document(
             "wavelengths/1", component, library, planned, unit, background, None,
             wavelength_range_nm=list(range_nm) if range_nm else None, step_nm=step_nm, absorbance_limit=absorbance_limit,
-            noise=(noise_floor, noise_transmittance, noise_wavelength_nm),
+            noise=(noise_floor, noise_transmittance, noise_wavelength_nm), noise_correlation_nm=noise_correlation_nm,
             path_length_cm=path_length_cm, path_length_u_cm=path_length_u_cm,
             dilution_factor=dilution_factor, dilution_factor_u=dilution_factor_u,
             count=count, candidates_nm=numbers(candidates_nm, "--candidates-nm"), minimum_spacing_nm=minimum_spacing_nm,
@@ -207,6 +208,7 @@ def dilution(
     noise_floor: NoiseFloor = None,
     noise_transmittance: NoiseTransmittance = None,
     noise_wavelength_nm: NoiseWavelength = None,
+    noise_correlation_nm: NoiseCorrelation = 0.0,
     target_relative_u: Target = None,
     plot: Plot = None,
     output_format: FormatOption = Format.TABLE,
@@ -219,7 +221,8 @@ def dilution(
         document = plan_document(
             "dilution/1", component, library, planned, unit, background, wavelengths_nm,
             wavelength_range_nm=list(range_nm) if range_nm else None, step_nm=step_nm, absorbance_limit=absorbance_limit,
-            noise=(noise_floor, noise_transmittance, noise_wavelength_nm), target_relative_u=target_relative_u,
+            noise=(noise_floor, noise_transmittance, noise_wavelength_nm), noise_correlation_nm=noise_correlation_nm,
+            target_relative_u=target_relative_u,
             cells_cm=numbers(cells_cm, "--cells-cm"), cell_relative_u=cell_relative_u,
             absorbance_window=window(absorbance_window, "--absorbance-window"),
             pipettes_ml=numbers(pipettes_ml, "--pipettes-ml"), flasks_ml=numbers(flasks_ml, "--flasks-ml"), steps=steps,
@@ -253,7 +256,7 @@ def _answer(
         raise typer.Exit(Exit.DONE_WITH_FLAGS)
 
 
-def _rendered(operation: str, response: BaseModel, form: Format) -> str:
+def _rendered(operation: str, response: Any, form: Format) -> str:
     if form is Format.JSON:
         from tinctor.operations.registry import dumped
 

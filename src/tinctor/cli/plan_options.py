@@ -18,6 +18,7 @@ __all__ = [
     "FormatOption",
     "Library",
     "Names",
+    "NoiseCorrelation",
     "NoiseFloor",
     "NoiseTransmittance",
     "NoiseWavelength",
@@ -67,6 +68,9 @@ AbsorbanceLimit = Annotated[float, typer.Option(help="Readings above this absorb
 NoiseFloor = Annotated[float | None, typer.Option(help="Standard uncertainty of a reading, in absorbance (default 0.0005).")]
 NoiseTransmittance = Annotated[float | None, typer.Option(help="... of transmittance, as a fraction (default 0.0001).")]
 NoiseWavelength = Annotated[float | None, typer.Option(help="... of the wavelength axis, in nm (default 0.05).")]
+NoiseCorrelation = Annotated[
+    float, typer.Option(help="Distance over which errors of neighbouring readings are alike, in nm (0: independent).")
+]
 Target = Annotated[
     float | None,
     typer.Option(help="Relative standard uncertainty wanted of each component (0.02 is 2 %): turns the answer into yes or no."),

@@ -55,6 +55,9 @@ class PlanRequest(RequestModel):
     wavelengths_nm: Numbers | None = None
     step_nm: Number | None = Field(None, description="distance of the readings; that of the coarsest record when left out")
     absorbance_limit: Number = 2.0
+    noise_correlation_nm: Number = Field(
+        0.0, description="distance over which errors of neighbouring readings are alike; 0 where they are independent"
+    )
     noise: NoiseIn = NoiseIn()
     target_relative_u: Number | None = Field(None, description="relative standard uncertainty wanted of each component")
     include_spectra: bool = Field(default=False, description="put the planned spectra into the response, for a chart")
@@ -123,7 +126,19 @@ class Plan:
                     "missing-concentration", "$.concentrations", "expected a concentration for each component, found none"
                 )
         (sample,) = gather(
-            [("$", lambda: planned_sample(components, planned, settings, step_nm=request.step_nm, **cell))],
+            [
+                (
+                    "$",
+                    lambda: planned_sample(
+                        components,
+                        planned,
+                        settings,
+                        step_nm=request.step_nm,
+                        noise_correlation_nm=request.noise_correlation_nm,
+                        **cell,
+                    ),
+                )
+            ],
         )
         return cls(
             sample, units, factors, records, {**asdict(settings), "concentration_unit": list(units), "library": request.library}

@@ -223,7 +223,7 @@ def _all_choices(sample: PlannedSample, asked: DilutionAsked, ways: Sequence[Dil
     limit = min(high, sample.settings.absorbance_limit)
     settings = replace(sample.settings, absorbance_limit=limit)
     cell = Cell(factor / path, np.full(path.size, asked.cell_relative_u), dilution_u)
-    expected = forecast(sample.design, sample.components, in_cell, cell, settings)
+    expected = forecast(sample.design, sample.components, in_cell, cell, settings, sample.noise_inflation)
     relative, quantified = _judged(sample, expected)
     linear_to = np.array([np.inf if c.linear_to is None else c.linear_to for c in sample.components])
     top = absorbance.argmax(axis=1)

@@ -37,6 +37,9 @@ class PlannedSample:
         Where readings will be taken; every component covers it.
     concentration : array (p,)
     path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u
+    noise_correlation_nm
+        Distance over which errors of neighbouring readings are alike; 0 where they are independent. Reading more finely than
+        this brings nothing.
     settings
         How it will be resolved: background, noise, absorbance limit, target.
     assumed
@@ -53,6 +56,7 @@ class PlannedSample:
     path_length_u_cm: float = 0.0
     dilution_factor: float = 1.0
     dilution_factor_u: float = 0.0
+    noise_correlation_nm: float = 0.0
     assumed: bool = False
     notes: tuple[str, ...] = ()
 
@@ -90,10 +94,16 @@ class PlannedSample:
         """Planned absorbance of the whole sample, (m,)."""
         return np.asarray(self.absorbance_by_component.sum(axis=1))
 
+    @property
+    def noise_inflation(self) -> float:
+        """Readings over effective readings, at least 1."""
+        step = median_step(self.wavelength_nm)
+        return max(1.0, self.noise_correlation_nm / step) if step > 0 else 1.0
+
     @cached_property
     def expected(self) -> Forecast:
         """What resolving is expected to give, by the resolver's own code; one row."""
-        return forecast(self.design, self.components, self.in_cell[None], self.cell, self.settings)
+        return forecast(self.design, self.components, self.in_cell[None], self.cell, self.settings, self.noise_inflation)
 
     def of(self, places: Sequence[int]) -> PlannedSample:
         """Return the same sample with some of the components only."""
@@ -126,6 +136,7 @@ def planned_sample(
     path_length_u_cm: float = 0.0,
     dilution_factor: float = 1.0,
     dilution_factor_u: float = 0.0,
+    noise_correlation_nm: float = 0.0,
 ) -> PlannedSample:
     """Return a planned sample, checked.
 
@@ -140,6 +151,9 @@ def planned_sample(
         How the sample will be resolved; `wavelength_range_nm` or `wavelengths_nm` choose the readings.
     step_nm
         Distance of the readings; that of the coarsest record where it is not given.
+    noise_correlation_nm
+        Distance over which errors of neighbouring readings are alike (drift, stray light, imperfect records); repeat scans and the
+        residuals of standards show it.
 
     Raises
     ------
@@ -156,13 +170,15 @@ def planned_sample(
     """
     settings = settings or ResolveSettings()
     _check_components(components)
-    _check_cell(path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u)
+    _check_cell(path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u, noise_correlation_nm)
     axis, notes = planned_axis(components, settings, step_nm)
     in_original = dilution_factor / path_length_cm
     design = build_design(axis, components, settings.background)
     values = _concentrations(design, concentration, in_original)
     cell = (path_length_cm, path_length_u_cm, dilution_factor, dilution_factor_u)
-    sample = PlannedSample(tuple(components), axis, values, settings, *cell, assumed=not concentration, notes=tuple(notes))
+    sample = PlannedSample(
+        tuple(components), axis, values, settings, *cell, noise_correlation_nm, assumed=not concentration, notes=tuple(notes)
+    )
     sample = sample._with_design(design)
     if sample.design.asked > axis.size:
         raise InputError.single(
@@ -253,12 +269,16 @@ def _check_components(components: Sequence[Component]) -> None:
         )
 
 
-def _check_cell(path_cm: float, path_u_cm: float, dilution: float, dilution_u: float) -> None:
+def _check_cell(path_cm: float, path_u_cm: float, dilution: float, dilution_u: float, correlation_nm: float) -> None:
     faults = []
     for name, value, least in (("path_length_cm", path_cm, "above 0"), ("dilution_factor", dilution, "at least 1")):
         if not (np.isfinite(value) and (value > 0 if least == "above 0" else value >= 1)):
             faults.append(Fault(name.replace("_", "-"), f".{name}", f"{name} must be a finite number {least}, found {value!r}"))
-    for name, value in (("path_length_u_cm", path_u_cm), ("dilution_factor_u", dilution_u)):
+    for name, value in (
+        ("path_length_u_cm", path_u_cm),
+        ("dilution_factor_u", dilution_u),
+        ("noise_correlation_nm", correlation_nm),
+    ):
         if not (np.isfinite(value) and value >= 0):
             faults.append(
                 Fault(name.replace("_", "-"), f".{name}", f"{name} must be a finite number of at least 0, found {value!r}")

@@ -1,7 +1,7 @@
 """What resolving would give for samples that have not been measured: the resolver's own fit of noise-free spectra.
 
 Uncertainties come from the same code as those of measured samples. What only a measurement can show is left at its
-expectation: residuals as large as declared, and no correlation between neighbours.
+expectation: residuals as large as declared, and as correlated between neighbours as is said.
 """
 
 from __future__ import annotations
@@ -63,7 +63,12 @@ class Forecast:
 
 
 def forecast(
-    design: Design, components: Sequence[Component], in_cell: FloatArray, cell: Cell, settings: ResolveSettings
+    design: Design,
+    components: Sequence[Component],
+    in_cell: FloatArray,
+    cell: Cell,
+    settings: ResolveSettings,
+    noise_inflation: float = 1.0,
 ) -> Forecast:
     """Return what resolving is expected to give.
 
@@ -79,6 +84,8 @@ def forecast(
         Path and dilution of each sample.
     settings
         Noise and absorbance limit: readings above are left out, as in resolving.
+    noise_inflation
+        Readings over effective readings, at least 1: how much correlation of neighbours enlarges the variance of the noise part.
 
     Examples
     --------
@@ -98,7 +105,7 @@ def forecast(
     columns = fit_columns(design)
     fit = fit_rows(columns, absorbance, settings.noise, None if keep.all() else keep)
     with np.errstate(invalid="ignore"):  # variances of rows that are all but singular may round to less than nothing
-        e = estimates(columns, fit, components, cell, settings.noise, np.ones(len(in_cell)))
+        e = estimates(columns, fit, components, cell, settings.noise, np.full(len(in_cell), noise_inflation))
     decision, detection = limits_of_detection(e.u_at_zero, e.proportional)
     enough = (fit.smallest_pivot >= SINGULAR_PIVOT) & (points >= design.asked)
     selectivity = 1.0 / np.sqrt(e.variance_inflation)
