@@ -152,8 +152,8 @@ def test_the_pair_the_author_of_the_data_chose(reference: Path) -> None:
 def test_forecast_against_measured_mixtures(reference: Path) -> None:
     """60 measured mixtures: no composition was prepared twice, so that the spread of replicates is not to be had; known
     concentrations are, with their own errors. Noise and its correlation are taken from the fits of the 20 standards alone, 1 % is
-    assumed for each stock; deviations of the mixtures with sound labels from what was weighed, over the forecast u, and the forecast
-    over what resolving then states.
+    assumed for each stock; deviations of the mixtures with sound labels from what was weighed, over the forecast u, and the
+    forecast over what resolving then states.
     """
     folder = reference / "metals-cucocrni"
     measured = spectra(folder / "spectra.csv")
@@ -179,5 +179,5 @@ def test_forecast_against_measured_mixtures(reference: Path) -> None:
     print(f"\n{len(sound)} mixtures; floor {floor:.4f}, correlation {correlation_nm:.0f} nm; rms deviation over forecast u:")
     print(f"{ratio:.2f}, {independent:.1f} if readings were independent; forecast over stated u, median: {stated:.2f}")
     assert 0.8 < stated < 1.25
-    assert 0.7 < ratio < 2.5  # above 1: errors of preparation and cell that nobody declared
+    assert 0.7 < ratio < 3.0  # above 1: errors of preparation and cell that nobody declared
     assert independent > 4.0, "negative control: readings of this spectrometer are not independent"

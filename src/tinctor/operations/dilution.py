@@ -207,6 +207,8 @@ def _why_not(choice: DilutionChoice, k: int) -> str:
         return ""
     if choice.beyond_linear[k]:
         return "above its linear range"
+    if choice.overshoots[k]:
+        return "its own highest absorbance is above the window"
     return "not determined" if np.isinf(choice.relative_u[k]) else "below its quantification limit, or outside the target"
 
 

@@ -2,7 +2,8 @@
 
 A dilution in a cell serves the sample when its highest absorbance lies in the window and every component planned is above its
 quantification limit (and meets the target, where there is one). Where none serves all, two together can: readings above the window
-are then left out, as resolving does above the absorbance limit, and each of the two serves some of the components.
+are then left out, as resolving does above the absorbance limit, and each of the two serves the components whose own highest
+absorbance is not above the window.
 """
 
 from __future__ import annotations
@@ -35,7 +36,7 @@ AbsorbanceWindow = tuple[float, float]
 #: Choices whose worst relative uncertainty is within this share of the best are as good (by judgement): fewer steps decide.
 AS_GOOD: Final = 0.2
 #: Choices looked at when two are sought.
-MOST_FOR_PAIRS: Final = 400
+MOST_FOR_PAIRS: Final = 200
 #: More ways than this are not a bench.
 MOST_WAYS: Final = 50_000
 
@@ -98,6 +99,8 @@ class DilutionChoice:
         Which components are above their quantification limit and meet the target.
     beyond_linear : bool array (p,)
         Which would be above the range in which Beer's law was shown.
+    overshoots : bool array (p,)
+        Which would have their own highest absorbance above the window, and be read on their flanks alone.
     in_window
         Whether the highest absorbance lies in the window.
     readings_left_out
@@ -111,6 +114,7 @@ class DilutionChoice:
     relative_u: FloatArray
     quantified: np.ndarray
     beyond_linear: np.ndarray
+    overshoots: np.ndarray
     in_window: bool
     readings_left_out: int
 
@@ -122,7 +126,7 @@ class DilutionChoice:
     @property
     def serves(self) -> np.ndarray:
         """Which components this choice gives a figure for, bool (p,)."""
-        return np.asarray(self.quantified & ~self.beyond_linear)
+        return np.asarray(self.quantified & ~self.beyond_linear & ~self.overshoots)
 
     @property
     def worst_relative_u(self) -> float:
@@ -187,7 +191,7 @@ def choose_dilution(sample: PlannedSample, asked: DilutionAsked | None = None) -
         )
     choices = _all_choices(sample, asked, ways)
     serving = sorted((c for c in choices if c.serves_all), key=lambda c: c.worst_relative_u)
-    pair = None if serving else _two(choices)
+    pair = None if serving else _two(choices, asked.absorbance_window[1])
     if not serving and pair is None:
         raise _out_of_reach(sample, asked, max(choices, key=lambda c: (int(c.serves.sum()), c.in_window, -c.worst_relative_u)))
     return DilutionAnswer(tuple(_ranked(serving, asked.absorbance_window[1])), pair)
@@ -226,7 +230,7 @@ def _all_choices(sample: PlannedSample, asked: DilutionAsked, ways: Sequence[Dil
     expected = forecast(sample.design, sample.components, in_cell, cell, settings, sample.noise_inflation)
     relative, quantified = _judged(sample, expected)
     linear_to = np.array([np.inf if c.linear_to is None else c.linear_to for c in sample.components])
-    top = absorbance.argmax(axis=1)
+    top, highest = absorbance.argmax(axis=1), sample.design.X[:, : len(sample.components)].max(axis=0)
     return [
         DilutionChoice(
             dilution=ways[k % len(ways)],
@@ -236,6 +240,7 @@ def _all_choices(sample: PlannedSample, asked: DilutionAsked, ways: Sequence[Dil
             relative_u=relative[k],
             quantified=quantified[k],
             beyond_linear=in_cell[k] > linear_to * (1 + 1e-9),
+            overshoots=in_cell[k] * highest > limit,
             in_window=bool(low <= absorbance[k, top[k]] <= limit),
             readings_left_out=int((absorbance[k] > limit).sum()),
         )
@@ -265,31 +270,43 @@ def _ranked(serving: list[DilutionChoice], high: float) -> list[DilutionChoice]:
     def merit(c: DilutionChoice) -> tuple[float, ...]:
         if c.worst_relative_u > as_good:
             return (1, c.worst_relative_u)
-        well_placed = high / 2 <= c.highest_absorbance <= 0.9 * high
-        return (0, len(c.dilution.steps), not well_placed, c.dilution.flask_total_ml, c.worst_relative_u)
+        return (0, len(c.dilution.steps), not _well_placed(c, high), c.dilution.flask_total_ml, c.worst_relative_u)
 
     return sorted(serving, key=merit)
 
 
-def _two(choices: list[DilutionChoice]) -> tuple[DilutionChoice, DilutionChoice] | None:
-    """The two that serve every component together, with the smallest worst uncertainty, each component read where it is better."""
-    useful = sorted((c for c in choices if c.serves.any()), key=lambda c: (-int(c.serves.sum()), c.worst_relative_u))[
-        :MOST_FOR_PAIRS
-    ]
-    best: tuple[float, int, float] | None = None
-    pair = None
-    for one, two in combinations(useful, 2):
-        if not (one.serves | two.serves).all():
-            continue
-        relative = np.fmin(np.where(one.serves, one.relative_u, np.inf), np.where(two.serves, two.relative_u, np.inf))
-        steps = len(one.dilution.steps) + len(two.dilution.steps)
-        volume = one.dilution.flask_total_ml + two.dilution.flask_total_ml
-        merit = (float(f"{np.nanmax(relative):.2g}"), steps, volume)
-        if best is None or merit < best:
-            best, pair = merit, (one, two)
-    if pair is None:
+def _two(choices: list[DilutionChoice], high: float) -> tuple[DilutionChoice, DilutionChoice] | None:
+    """The two that serve every component together, each component read where it is better: of those as good as the best, fewer
+    steps, then better placed absorbances, then less volume; the more dilute first."""
+    useful = sorted((c for c in choices if c.serves.any()), key=lambda c: (not c.in_window, c.worst_relative_u))
+    kept = [c for served in _patterns(useful) for c in useful if c.serves.tolist() == served][:MOST_FOR_PAIRS]
+    pairs = []
+    for one, two in combinations(kept, 2):
+        if (one.serves | two.serves).all():
+            relative = np.fmin(np.where(one.serves, one.relative_u, np.inf), np.where(two.serves, two.relative_u, np.inf))
+            pairs.append((float(np.nanmax(relative)), one, two))
+    if not pairs:
         return None
-    return (pair[0], pair[1]) if pair[0].highest_absorbance <= pair[1].highest_absorbance else (pair[1], pair[0])
+    as_good = min(u for u, _, _ in pairs) * (1 + AS_GOOD)
+
+    def merit(pair: tuple[float, DilutionChoice, DilutionChoice]) -> tuple[float, ...]:
+        both = pair[1:]
+        misplaced = sum(c.in_window and not _well_placed(c, high) for c in both)
+        volume = sum(c.dilution.flask_total_ml for c in both)
+        return (sum(len(c.dilution.steps) for c in both), sum(not c.in_window for c in both), misplaced, volume, pair[0])
+
+    _, one, two = min((pair for pair in pairs if pair[0] <= as_good), key=merit)
+    return (one, two) if one.highest_absorbance <= two.highest_absorbance else (two, one)
+
+
+def _patterns(choices: list[DilutionChoice]) -> list[list[bool]]:
+    """The different sets of components that choices serve, those that serve most first."""
+    found = {tuple(c.serves.tolist()) for c in choices}
+    return [list(pattern) for pattern in sorted(found, key=lambda pattern: (-sum(pattern), pattern))]
+
+
+def _well_placed(choice: DilutionChoice, high: float) -> bool:
+    return high / 2 <= choice.highest_absorbance <= 0.9 * high
 
 
 def _out_of_reach(sample: PlannedSample, asked: DilutionAsked, nearest: DilutionChoice) -> InputError:

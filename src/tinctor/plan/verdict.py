@@ -44,10 +44,11 @@ def verdict_of(sample: PlannedSample, k: int) -> Verdict:
     expected, limits = sample.expected, sample.settings.limits
     if not sample.design.X[:, k].any():
         return Verdict("inseparable", "it absorbs nowhere at the wavelengths read", _target(sample, np.inf))
-    if expected.points[0] < sample.design.asked:
+    left = int(expected.points[0])
+    if left < sample.wavelength_nm.size and not expected.determined[0, k]:
         limit = sample.settings.absorbance_limit
-        words = f"only {expected.points[0]:.0f} readings are at or below absorbance {limit:g}: dilute or use a shorter cell"
-        return Verdict("inseparable", words, _target(sample, np.inf))
+        words = f"only {left} of {sample.wavelength_nm.size} readings are at or below absorbance {limit:g}, and do not determine it"
+        return Verdict("inseparable", f"{words}: dilute or use a shorter cell", _target(sample, np.inf))
     selectivity = float(expected.selectivity[0, k])
     if selectivity * limits.collinear_refused < 1.0 or not expected.determined[0, k]:
         return Verdict("inseparable", _taken(sample, k, selectivity), _target(sample, np.inf), overlapping=True)
