@@ -11,6 +11,9 @@
     memory   peak memory that resolving adds, against the input array
     standards a series of 50 standards by 1000 wavelengths to a record (fits, tests, superposition, uncertainties), against
              numpy.polyfit called once for all columns, which yields the lines alone
+    overlap  overlap of 6 components by 1000 wavelengths, complete answer, against one numpy.linalg.pinv of the same columns
+    choice   the best 8 of 301 wavelengths for 4 components, by each criterion, against plain greedy forward selection: time,
+             how much larger greedy's criterion is, and whether the choice was proved to be the best
 
 Needs what the tests need (scripts/test.py --setup-only makes the environment). Machines differ and are noisy: read the ratios.
 """
@@ -31,6 +34,7 @@ from environment import ROOT, python_with_tinctor
 
 INSIDE = "TINCTOR_BENCH_INSIDE"
 WAVELENGTHS, COMPONENTS, REPEATS = 301, 3, 5
+NAMES = ("batch", "cold", "memory", "standards", "overlap", "choice")
 
 
 def best(work: Callable[[], object], repeats: int = REPEATS) -> float:
@@ -167,19 +171,83 @@ def standards() -> dict[str, object]:
     }
 
 
+def _planned(components: int, readings: int):
+    """Return a planned sample of dye-like bands."""
+    import numpy as np
+
+    from tinctor import Component, planned_sample
+
+    w = np.linspace(400.0, 700.0, readings)
+    places = np.linspace(430.0, 670.0, components)
+    bands = [30.0 * np.exp(-0.5 * ((w - at) / 28.0) ** 2) + 4.0 * np.exp(-0.5 * ((w - 380.0) / 40.0) ** 2) for at in places]
+    dyes = [Component(f"dye-{k}", w, e, basis="mass", scale_relative_u=0.01) for k, e in enumerate(bands)]
+    return planned_sample(dyes)
+
+
+def overlap() -> dict[str, object]:
+    """Time the complete answer on overlap."""
+    import numpy as np
+
+    from tinctor import overlap as answer
+
+    whole = best(lambda: answer(_planned(6, 1000)), 20)
+    columns = np.array(_planned(6, 1000).design.X)
+    return {
+        "bench": "overlap",
+        "components": 6,
+        "wavelengths": 1000,
+        "overlap_ms": round(1e3 * whole, 1),
+        "overlap_over_pinv": round(whole / best(lambda: np.linalg.pinv(columns), 20), 1),
+    }
+
+
+def _greedy(problem, k: int):
+    """Add the candidate that improves most, k times; what a plain script would do."""
+    import numpy as np
+
+    from tinctor.plan.selection import objectives
+
+    chosen: list[int] = []
+    for _ in range(k):
+        rest = np.array([i for i in range(problem.n) if i not in chosen])
+        sets = np.column_stack([np.tile(np.array(chosen, dtype=int), (rest.size, 1)), rest])
+        chosen.append(int(rest[np.argmin(objectives(problem, sets))]))
+    return objectives(problem, np.array([chosen]))[0]
+
+
+def choice() -> dict[str, object]:
+    """Time the search for wavelengths and compare it with greedy selection."""
+    from tinctor import WavelengthsAsked
+    from tinctor.plan.search import best_set
+    from tinctor.plan.selection import CRITERIA, criterion_value
+    from tinctor.plan.wavelengths import _problem
+
+    sample = _planned(4, 301)
+    result: dict[str, object] = {"bench": "choice", "components": 4, "wavelengths": 301, "count": 8}
+    for criterion in CRITERIA:
+        problem = _problem(sample, WavelengthsAsked(criterion=criterion))
+        found = best_set(problem, 8)
+        ours, greedy = best(lambda problem=problem: best_set(problem, 8), 3), best(lambda problem=problem: _greedy(problem, 8), 3)
+        value = criterion_value(problem, float(_greedy(problem, 8))) / criterion_value(problem, found.objective)
+        key = criterion.replace("-", "_")
+        result |= {f"{key}_s": round(ours, 2), f"{key}_over_greedy": round(ours / greedy, 1)}
+        result |= {f"{key}_greedy_value_over_ours": round(value, 3), f"{key}_proved": found.exact}
+    return result
+
+
 def main() -> int:
     """Run each bench in a process of its own and print its line."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("--spectra", type=int, default=100_000, help="spectra of the batch (default 100000)")
-    parser.add_argument("--only", choices=["batch", "cold", "memory", "standards"], help="one bench")
+    parser.add_argument("--only", choices=NAMES, help="one bench")
     options = parser.parse_args()
     if os.environ.get(INSIDE):
         benches = {"batch": lambda: batch(options.spectra), "cold": cold, "memory": lambda: memory(options.spectra)}
-        result = {**benches, "standards": standards}[options.only]()
+        result = {**benches, "standards": standards, "overlap": overlap, "choice": choice}[options.only]()
         print(json.dumps(result), flush=True)
         return 0
     python = python_with_tinctor(extra="dev")
-    for name in [options.only] if options.only else ["batch", "cold", "memory", "standards"]:
+    for name in [options.only] if options.only else NAMES:
         command = [str(python), str(Path(__file__).resolve()), "--only", name, "--spectra", str(options.spectra)]
         subprocess.run(command, cwd=ROOT, env={**os.environ, INSIDE: "1"}, check=True)
     return 0

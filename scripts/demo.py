@@ -25,6 +25,10 @@ RESOLVE = [
     "-c", "hollin-yellow", "-c", "bramble-red", "-c", "tarn-blue", "--unit", "g/L", "-b", "offset", "-b", "scatter",
 ]  # fmt: skip
 
+PLANNED = [
+    "-l", "palewater-dyehouse", "-c", "hollin-yellow,bramble-red,tarn-blue",
+    "--planned", "hollin-yellow=0.8,bramble-red=0.55,tarn-blue=0.6", "--unit", "g/L",
+]  # fmt: skip
 
 SERIES = [
     f"{DATA}/standards.csv", "--sheet", f"{DATA}/standards-sheet.csv", "--unit", "mg/L", "--stock-relative-u", "0.004",
@@ -66,6 +70,9 @@ def main() -> int:
     argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter).parse_args()
     python = python_with_tinctor()
     tinctor(python, "library", "show", "palewater-dyehouse/tarn-blue")
+    print("\nBefore measuring: can the dyes of bath 3 be told apart, and at which dilution?")
+    tinctor(python, "overlap", *PLANNED, "--dilution-factor", "50")
+    tinctor(python, "dilution", *PLANNED, "--cells-cm", "0.5,1")
     tinctor(python, *RESOLVE)
     compare(tinctor(python, *RESOLVE, "--format", "csv", show=False))
     print("\nA new lot of Tarn Blue, weighed: its record, and three baths of it alone.")
