@@ -260,3 +260,9 @@ def test_schemas_describe_the_documents() -> None:
     assert set(REQUEST) <= set(request["properties"])
     assert request["additionalProperties"] is False
     assert "results" in op.response.model_json_schema(by_alias=True, mode="serialization")["properties"]
+
+
+def test_provenance_does_not_depend_on_what_else_the_process_has_done() -> None:
+    import tinctor.standards.distributions  # noqa: F401  (loads scipy, which resolve does not use)
+
+    assert run_document("resolve", changed())["provenance"]["scipy"] is None

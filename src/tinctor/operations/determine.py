@@ -167,7 +167,7 @@ def run(request: DetermineRequest) -> DetermineResponse:
         dropped=[DroppedOut(id=d.id, reason=d.reason, wavelength_nm=list(d.wavelength_nm)) for d in result.dropped],
         flags=notes_out(n for n in result.notes if request.design == "external" or n.code != "intercept"),
         provenance=provenance(
-            request, [], request.model_dump(by_alias=True, exclude={"standards", "blank", "unknowns", "schema_"})
+            request, [], request.model_dump(by_alias=True, exclude={"standards", "blank", "unknowns", "schema_"}), with_scipy=True
         ),
     )
 

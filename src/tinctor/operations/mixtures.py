@@ -138,7 +138,9 @@ def run(request: MixturesRequest) -> MixturesResponse:
             for k, m in enumerate(request.mixtures)
         ],
         flags=_flags(request, result, names),
-        provenance=provenance(request, [], request.model_dump(by_alias=True, exclude={"mixtures", "blank", "schema_"})),
+        provenance=provenance(
+            request, [], request.model_dump(by_alias=True, exclude={"mixtures", "blank", "schema_"}), with_scipy=True
+        ),
     )
 
 

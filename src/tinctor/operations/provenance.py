@@ -45,23 +45,23 @@ def request_sha256(request: RequestModel) -> str:
     return hashlib.sha256(canonical_json(request.model_dump(by_alias=True)).encode()).hexdigest()
 
 
-def provenance(request: RequestModel, records: list[RecordUsed], settings: dict[str, Any]) -> Provenance:
-    """Return the provenance of a response."""
+def provenance(
+    request: RequestModel, records: list[RecordUsed], settings: dict[str, Any], *, with_scipy: bool = False
+) -> Provenance:
+    """Return the provenance of a response; `with_scipy` when the operation uses it, whatever else this process has loaded."""
     return Provenance(
         version=__version__,
         python=sys.version.split()[0],
         numpy=np.__version__,
-        scipy=_scipy_used(),
+        scipy=_scipy_version() if with_scipy else None,
         request_sha256=request_sha256(request),
         records=records,
         settings=settings,
     )
 
 
-def _scipy_used() -> str | None:
-    """Version of scipy where an operation that uses it has been loaded; importing it to find out would cost a cold start."""
-    if "tinctor.standards.distributions" not in sys.modules:
-        return None
+def _scipy_version() -> str:
+    """Version of scipy, imported here alone: importing it for every operation would cost a cold start."""
     import scipy
 
     return str(scipy.__version__)

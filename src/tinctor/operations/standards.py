@@ -129,7 +129,7 @@ def run(request: StandardsRequest) -> StandardsResponse:
         handbook=[handbook_out(h) for h in handbook],
         flags=notes_out(result.notes),
         base_unit=BASE_UNIT[request.chosen_basis],
-        provenance=provenance(request, [], _settings_used(request)),
+        provenance=provenance(request, [], _settings_used(request), with_scipy=True),
     )
 
 

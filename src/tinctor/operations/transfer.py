@@ -110,7 +110,9 @@ def run(request: TransferRequest) -> TransferResponse:
         component=corrected,
         parent=used[0].record if used else None,
         flags=[*_saturated(used_readings), *_flags(found, float(A[used_readings].max()))],
-        provenance=provenance(request, used, request.model_dump(by_alias=True, exclude={"component", "check", "blank", "schema_"})),
+        provenance=provenance(
+            request, used, request.model_dump(by_alias=True, exclude={"component", "check", "blank", "schema_"}), with_scipy=True
+        ),
     )
 
 
