@@ -232,7 +232,11 @@ def test_matplotlib_is_loaded_for_a_chart_only(tmp_path: Path) -> None:
         (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue"], 3, "expected at least two, found 1"),
         (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue,tarn-blue"], 3, "found twice: 'tarn-blue'"),
         (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue,tarm-blue"], 3, "did you mean 'tarn-blue'"),
-        (["overlap", *DYES, "--planned", "tarn-blue=1"], 3, "no concentration is planned for 'hollin-yellow', 'bramble-red'"),
+        (
+            ["overlap", *DYES, "--planned", "tarn-blue=1"],
+            3,
+            "no concentration is planned for 'hollin-yellow', 'bramble-red' [at --planned]",
+        ),
         (["overlap", *DYES, "--planned", "tarn-blue"], 2, "expected NAME=VALUE, found 'tarn-blue'"),
         (["overlap", *DYES, "--planned", "tarn-blue=much"], 2, "expected a number, found 'much'"),
         (["overlap", *DYES, "--planned", "tarn-blue=1,tarn-blue=2"], 2, "stands twice"),
@@ -247,8 +251,8 @@ def test_matplotlib_is_loaded_for_a_chart_only(tmp_path: Path) -> None:
         (["wavelengths", *DYES, "--candidates-nm", "250,450,500,550,600"], 3, "found 250 nm"),
         (["dilution", *DYES], 3, "none is given"),
         (["dilution", *DYES, "--on-fibre", "tarn-blue=1"], 3, "belong together"),
-        (["dilution", *DYES, *PLANNED, "--absorbance-window", "1"], 2, "two numbers"),
-        (["dilution", *DYES, *PLANNED, "--flasks-ml", "10", "--pipettes-ml", "9", "--steps", "1"], 3, "add glassware"),
+        (["dilution", *DYES, *PLANNED, "--absorbance-window", "1", "x"], 2, "is not a valid"),
+        (["dilution", *DYES, *PLANNED, "--flasks-ml", "10", "--pipettes-ml", "9", "--steps", "1"], 3, "[at --flasks-ml]"),
         (["dilution", *DYES, *PLANNED, "--on-fibre", "tarn-blue=1", "--liquor-ratio", "10"], 3, "not both"),
     ],
 )

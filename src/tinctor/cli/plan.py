@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import sys
+from dataclasses import replace
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
@@ -36,9 +37,9 @@ from tinctor.cli.plan_options import (
     Unit,
     WavelengthsNm,
     numbers,
+    option_of,
     plan_document,
     values_by_name,
-    window,
 )
 from tinctor.cli.reading import say
 
@@ -191,8 +192,8 @@ def dilution(
         float, typer.Option(help="Relative standard uncertainty of a path length (0: taken as exact).")
     ] = 0.0,
     absorbance_window: Annotated[
-        str, typer.Option(help="The highest absorbance is to lie between these two, separated by a comma.")
-    ] = "0.1,1.0",
+        tuple[float, float], typer.Option(help="The highest absorbance is to lie from LOW to HIGH.", metavar="LOW HIGH")
+    ] = (0.1, 1.0),
     pipettes_ml: Annotated[
         str | None, typer.Option(help="Pipettes there are, in mL, separated by commas (default 1,2,5,10,20,25,50).")
     ] = None,
@@ -224,7 +225,7 @@ def dilution(
             noise=(noise_floor, noise_transmittance, noise_wavelength_nm), noise_correlation_nm=noise_correlation_nm,
             target_relative_u=target_relative_u,
             cells_cm=numbers(cells_cm, "--cells-cm"), cell_relative_u=cell_relative_u,
-            absorbance_window=window(absorbance_window, "--absorbance-window"),
+            absorbance_window=list(absorbance_window),
             pipettes_ml=numbers(pipettes_ml, "--pipettes-ml"), flasks_ml=numbers(flasks_ml, "--flasks-ml"), steps=steps,
             on_fibre_percent=values_by_name(on_fibre, "--on-fibre"), liquor_ratio_l_per_kg=liquor_ratio,
         )  # fmt: skip
@@ -240,9 +241,7 @@ def _answer(
         return
     if plot is not None:
         document["include_spectra"] = True
-    from tinctor.operations.registry import run_checked
-
-    response = run_checked(operation, document)
+    response = _run(operation, document, form)
     if plot is not None:
         from tinctor.cli.plotting import put_chart
 
@@ -254,6 +253,19 @@ def _answer(
         say(_cautions(response))
     if strict and _needs_a_look(response):
         raise typer.Exit(Exit.DONE_WITH_FLAGS)
+
+
+def _run(operation: str, document: dict[str, Any], form: Format) -> Any:
+    """Run an operation; faults point at the option typed, or at the document's key where that is what is asked for."""
+    from tinctor.errors import InputError
+    from tinctor.operations.registry import run_checked
+
+    try:
+        return run_checked(operation, document)
+    except InputError as error:
+        if form is Format.JSON:
+            raise
+        raise InputError([replace(fault, path=option_of(fault.path)) for fault in error.faults]) from error
 
 
 def _rendered(operation: str, response: Any, form: Format) -> str:

@@ -35,13 +35,23 @@ __all__ = [
     "Unit",
     "WavelengthsNm",
     "numbers",
+    "option_of",
     "plan_document",
     "values_by_name",
-    "window",
 ]
 
 #: Kinds of chart file, by the ending of its name.
 CHART_KINDS = (".svg", ".png", ".pdf")
+
+#: Options whose name is not that of the document's key.
+OPTIONS = {
+    "components": "component",
+    "concentrations": "planned",
+    "concentration_unit": "unit",
+    "wavelength_range_nm": "range-nm",
+    "on_fibre_percent": "on-fibre",
+    "liquor_ratio_l_per_kg": "liquor-ratio",
+}
 
 Names = Annotated[list[str], typer.Option("--component", "-c", help="Component; repeat, or separate by commas.")]
 Library = Annotated[str, typer.Option("--library", "-l", help="Collection of the components: a name, or the path of a folder.")]
@@ -140,12 +150,22 @@ def numbers(text: str | None, option: str) -> list[float] | None:
     return None if text is None else [_number(part, option) for part in text.split(",")]
 
 
-def window(text: str, option: str) -> list[float]:
-    """Return two numbers separated by a comma."""
-    found = numbers(text, option) or []
-    if len(found) != 2:
-        raise typer.BadParameter(f"expected two numbers separated by a comma, found {text!r}", param_hint=option)
-    return found
+def option_of(path: str) -> str:
+    """Return the option that stands behind a path of the document.
+
+    Examples
+    --------
+    >>> option_of("$.flasks_ml[2]"), option_of("$.concentrations.tarn-blue"), option_of("$.noise.floor")
+    ('--flasks-ml', '--planned tarn-blue', '--noise-floor')
+    """
+    key, _, rest = path.removeprefix("$").lstrip(".").partition(".")
+    key = key.partition("[")[0]
+    if not key:
+        return path
+    if key == "noise":
+        return f"--noise-{rest.replace('_', '-')}"
+    option = OPTIONS.get(key, key.replace("_", "-"))
+    return f"--{option} {rest}".rstrip() if key in ("concentrations", "on_fibre_percent") else f"--{option}"
 
 
 def _number(text: str, option: str) -> float:

@@ -223,11 +223,13 @@ def _conflicts(sample: PlannedSample) -> tuple[tuple[int, ...], ...]:
     p = len(sample.components)
     limit = sample.settings.limits.collinear_refused
     found: list[tuple[int, ...]] = []
+    # in the coordinates of the orthonormal basis lengths and angles are the same, and the columns short
+    X = sample.design.Q.T @ sample.design.X
     for size in range(2, p + 1 if p <= LARGEST_ENUMERATED else 4):
         for places in combinations(range(p), size):
             if any(set(known) <= set(places) for known in found):
                 continue
-            columns = np.column_stack([sample.design.X[:, list(places)], sample.design.X[:, p:]])
+            columns = np.column_stack([X[:, list(places)], X[:, p:]])
             if (net_analyte_signal(columns)[1][:size] * limit < 1.0).any():
                 found.append(places)
     return tuple(found)

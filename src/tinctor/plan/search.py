@@ -25,6 +25,10 @@ __all__ = ["Found", "best_set"]
 NODES: Final = 300
 #: A node of no more sets than this is gone through set by set.
 FEW_SETS: Final = 4000
+#: With more unknowns than this fewer nodes are looked at.
+CHEAP_UNKNOWNS: Final = 5
+#: Smallest eigenvalue of M (1 for all candidates together) above which a rank-one update of its inverse keeps its digits.
+WELL_DETERMINED: Final = 1e-7
 #: Where a wavelength error counts the bound says little: this part of the nodes is spent on it.
 BIASED_SHARE: Final = 5
 #: There, and with no more sets than this, every set is looked at.
@@ -109,9 +113,15 @@ def best_set(problem: Problem, k: int, nodes: int = NODES) -> Found | None:
     best.offer(np.array(met))
     for start in [best.chosen, *(_starts(problem, oracle, mask) if problem.shifted is not None else [])]:
         best.offer(_exchanged(problem, start)[None])
-    bound, looked_at = _search(problem, oracle, mask, root, best, nodes if problem.shifted is None else nodes // BIASED_SHARE)
+    bound, looked_at = _search(problem, oracle, mask, root, best, _affordable(problem, nodes))
     exact = bound >= best.to_beat
     return Found(np.sort(best.chosen), best.objective, best.objective if exact else bound, exact, looked_at)
+
+
+def _affordable(problem: Problem, nodes: int) -> int:
+    """Fewer nodes where each costs more, so that an answer takes seconds: they cost by the square of the unknowns."""
+    share = min(1.0, (CHEAP_UNKNOWNS / problem.unknowns) ** 2)
+    return int(nodes * share) if problem.shifted is None else int(nodes * share) // BIASED_SHARE
 
 
 def _starts(problem: Problem, oracle: Oracle, mask: np.ndarray) -> list[np.ndarray]:
@@ -204,13 +214,33 @@ def _exchange_values(problem: Problem, chosen: np.ndarray) -> FloatArray:
     """Objectives of all sets with one pick replaced, (k, n); infinite where spacing or repetition forbids it."""
     rows = problem.Z[chosen]
     M = rows.T @ rows
-    outer = problem.Z[:, :, None] * problem.Z[:, None, :]
-    moved = None if problem.shifted is None else problem.Z[:, :, None] * problem.shifted[:, None, :]
     values = np.full((len(chosen), problem.n), np.inf)
     for t, place in enumerate(chosen):
         others = problem.wavelength_nm[np.delete(chosen, t)]
         distance = np.abs(problem.wavelength_nm[:, None] - others).min(axis=1, initial=np.inf)
         allowed = np.flatnonzero(distance >= max(problem.spacing_nm * (1 - 1e-9), 1e-12))
-        left = None if moved is None else moved[chosen].sum(axis=0) - moved[place] + moved[allowed]
-        values[t, allowed] = objectives_of(problem, M - outer[place] + outer[allowed], left)
+        left = M - np.outer(problem.Z[place], problem.Z[place])
+        if problem.shifted is None and np.linalg.eigvalsh(left)[0] > WELL_DETERMINED:
+            values[t, allowed] = _with_one_more(problem, left, problem.Z[allowed])
+            continue
+        added = problem.Z[allowed]
+        moved = None
+        if problem.shifted is not None:
+            rest = np.delete(chosen, t)
+            moved = problem.Z[rest].T @ problem.shifted[rest] + added[:, :, None] * problem.shifted[allowed][:, None, :]
+        values[t, allowed] = objectives_of(problem, left + added[:, :, None] * added[:, None, :], moved)
     return values
+
+
+def _with_one_more(problem: Problem, M: FloatArray, added: FloatArray) -> FloatArray:
+    """Objectives of M with one row added, (n,): the inverse of a matrix with a rank-one change (Sherman and Morrison 1950)."""
+    inverse = np.linalg.inv(M)
+    C = problem.T @ inverse @ problem.T.T
+    Y = added @ inverse
+    size = 1.0 + np.einsum("ij,ij->i", Y, added)
+    lowered = Y @ problem.T.T
+    if problem.criterion == "determinant":
+        taken = np.einsum("ij,ij->i", lowered @ np.linalg.inv(C), lowered) / size
+        return np.asarray(np.linalg.slogdet(C)[1] + np.log1p(-np.minimum(taken, 1 - 1e-15)))
+    variance = np.diag(C) - lowered**2 / size[:, None]
+    return np.asarray(variance.max(axis=1) if problem.criterion == "worst-relative-u" else variance.mean(axis=1))

@@ -145,7 +145,7 @@ def _spectra(axes: Axes, spectra: SpectraOut, quantity: str) -> None:
     """Lines labelled at their highest point."""
     units = sorted(set(spectra.absorptivity_unit))
     for k, (name, values) in enumerate(zip(spectra.names, spectra.absorptivity, strict=True)):
-        colour = COLOURS[k % len(COLOURS)]
+        colour = COLOURS[(k + k // len(COLOURS)) % len(COLOURS)]  # dashes come round after seven, then with another colour
         marker = "." if len(values) < 30 else ""
         axes.plot(spectra.wavelength_nm, values, linestyle=DASHES[k % len(DASHES)], color=colour, marker=marker)
         top = max(range(len(values)), key=values.__getitem__)
