@@ -251,7 +251,7 @@ def test_matplotlib_is_loaded_for_a_chart_only(tmp_path: Path) -> None:
         (["wavelengths", *DYES, "--candidates-nm", "250,450,500,550,600"], 3, "found 250 nm"),
         (["dilution", *DYES], 3, "none is given"),
         (["dilution", *DYES, "--on-fibre", "tarn-blue=1"], 3, "belong together"),
-        (["dilution", *DYES, *PLANNED, "--absorbance-window", "1", "x"], 2, "is not a valid"),
+        (["dilution", *DYES, *PLANNED, "--absorbance-window", "1", "x"], 2, "'--absorbance-window'"),
         (["dilution", *DYES, *PLANNED, "--flasks-ml", "10", "--pipettes-ml", "9", "--steps", "1"], 3, "[at --flasks-ml]"),
         (["dilution", *DYES, *PLANNED, "--on-fibre", "tarn-blue=1", "--liquor-ratio", "10"], 3, "not both"),
     ],
