@@ -213,6 +213,14 @@ def test_what_cannot_be_chosen_is_refused_with_a_way_out(asked: dict[str, object
     assert words in caught.value.faults[0].message
 
 
+def test_no_wavelength_above_noise_is_refused() -> None:
+    with pytest.raises(InputError, match="below the noise of a reading") as caught:
+        choose_wavelengths(planned_sample(DYES, {**PLANNED, "red": 1e-6}))
+    assert "'red'" in caught.value.faults[0].message
+    with pytest.raises(InputError, match="below the noise of a reading"):
+        planned_sample(DYES, dict.fromkeys(PLANNED, 1e-6))
+
+
 def test_components_that_are_alike_cannot_be_chosen_for() -> None:
     twin = Component("twin", W, DYES[0].absorptivity * 2, basis="mass")
     with pytest.raises(InputError, match="cannot be told from the other"):

@@ -180,15 +180,28 @@ def planned_sample(
         tuple(components), axis, values, settings, *cell, noise_correlation_nm, assumed=not concentration, notes=tuple(notes)
     )
     sample = sample._with_design(design)
-    if sample.design.asked > axis.size:
+    _check_readings(sample)
+    return sample
+
+
+def _check_readings(sample: PlannedSample) -> None:
+    """Enough of them, and something to read."""
+    p, asked, axis = len(sample.components), sample.design.asked, sample.wavelength_nm
+    if asked > axis.size:
         raise InputError.single(
             "too-few-wavelengths",
-            ".wavelengths_nm" if settings.wavelengths_nm else ".wavelength_range_nm",
-            f"{len(components)} components and {sample.design.asked - len(components)} background term(s) need at least "
-            f"{sample.design.asked} wavelengths, found {axis.size}",
+            ".wavelengths_nm" if sample.settings.wavelengths_nm else ".wavelength_range_nm",
+            f"{p} components and {asked - p} background term(s) need at least {asked} wavelengths, found {axis.size}",
             "read at more wavelengths, leave a component out, or take a blank and fit no background",
         )
-    return sample
+    highest, noise = float(sample.absorbance.max()), float(sample.settings.noise.reading_u(0.0))
+    if highest < noise:
+        raise InputError.single(
+            "below-noise",
+            ".concentrations",
+            f"the planned absorbance is {highest:.2g} at its highest, below the noise of a reading, {noise:.2g}",
+            "plan a higher concentration or less dilution, use a longer cell, or look at other wavelengths",
+        )
 
 
 def planned_axis(components: Sequence[Component], settings: ResolveSettings, step_nm: float | None) -> tuple[FloatArray, list[str]]:

@@ -186,6 +186,7 @@ def _pool(sample: PlannedSample, asked: WavelengthsAsked) -> PlannedSample:
             f"{pool.design.asked} are needed (planned: {A.min():.3g} to {A.max():.3g})",
             "change the dilution, the cell or the window; `tinctor dilution` finds a dilution that fits",
         )
+    _check_seen(pool, usable)
     if usable.sum() > MOST_CANDIDATES:
         raise InputError.single(
             "too-many-candidates",
@@ -194,6 +195,20 @@ def _pool(sample: PlannedSample, asked: WavelengthsAsked) -> PlannedSample:
             "give step_nm, a narrower range, or candidates_nm",
         )
     return pool if usable.all() else pool.at(pool.wavelength_nm[usable])
+
+
+def _check_seen(pool: PlannedSample, usable: np.ndarray) -> None:
+    """No wavelength is good for a component that stays below the noise at all of them."""
+    parts, noise = pool.absorbance_by_component[usable], float(pool.settings.noise.reading_u(0.0))
+    highest = parts.max(axis=0)
+    unseen = [n for n, top, c in zip(pool.names, highest, pool.concentration, strict=True) if c > 0 and top < noise]
+    if unseen:
+        raise InputError.single(
+            "below-noise",
+            ".concentrations",
+            f"{quoted(unseen)} has a planned absorbance below the noise of a reading, {noise:.2g}, at every candidate",
+            "plan a higher concentration, use less dilution or a longer cell, or add candidates where it absorbs",
+        )
 
 
 def _listed(sample: PlannedSample, candidates_nm: Sequence[float]) -> FloatArray:
