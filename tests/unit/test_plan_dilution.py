@@ -112,3 +112,24 @@ def test_what_cannot_be_done_is_refused_with_a_way_out(asked: dict[str, object],
 def test_a_dilution_without_concentrations_is_refused() -> None:
     with pytest.raises(InputError, match="none is given"):
         choose_dilution(planned_sample([RED, BLUE]))
+
+
+def test_one_pipette_used_twice_is_wrong_twice_in_the_same_direction() -> None:
+    (twice,) = [d for d in dilutions([10.0], [100.0], 2) if len(d.steps) == 2]
+    pipette, flask = 0.020 / 10 / math.sqrt(6), 0.10 / 100 / math.sqrt(6)
+    assert twice.relative_u == pytest.approx(math.sqrt((2 * pipette) ** 2 + 2 * flask**2), rel=1e-12)
+
+
+def test_each_of_two_serves_what_the_other_does_not() -> None:
+    w = np.arange(400.0, 601.0, 5.0)
+    a, b = (Component(n, w, 1e4 * np.exp(-0.5 * ((w - at) / 20.0) ** 2)) for n, at in (("a", 450.0), ("b", 520.0)))
+    answer = choose_dilution(planned_sample([a, b], {"a": 1e-2, "b": 3e-6}, ResolveSettings(background=())))
+    assert answer.choices == ()
+    assert answer.pair is not None
+    assert answer.pair[0].serves.tolist() == [True, False]
+    assert answer.pair[1].serves.tolist() == [False, True]
+
+
+def test_too_much_glassware_is_refused_before_it_is_combined() -> None:
+    with pytest.raises(InputError, match="name fewer pipettes and flasks"):
+        dilutions(np.arange(1.0, 41.0).tolist(), np.arange(50.0, 90.0).tolist(), 2)

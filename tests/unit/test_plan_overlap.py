@@ -238,3 +238,32 @@ def test_reading_more_finely_than_noise_is_correlated_brings_nothing() -> None:
 def test_conditions_do_not_change_the_numbers() -> None:
     other = Component("blue", W, BLUE.absorptivity, basis="mass", scale_relative_u=0.005, conditions=Conditions(ph=9.0))
     assert words(RED, other) == words(RED, BLUE)
+
+
+def test_one_that_the_background_imitates_is_a_conflict_by_itself() -> None:
+    flat = Component("flat", W, np.full(W.size, 10.0), basis="mass")
+    answer = overlap(planned_sample([RED, flat]))
+    assert [v.word for v in answer.verdicts] == ["separable", "inseparable"]
+    assert answer.conflicts == ((1,),)
+    assert "'offset'" in answer.verdicts[1].reason
+    assert answer.groups == ()
+
+
+def test_nothing_is_asked_of_a_component_of_which_nothing_is_planned() -> None:
+    settings = ResolveSettings(target_relative_u=0.05)
+    answer = overlap(planned_sample([RED, TWIN, BLUE], {"red": 0.01, "twin": 0.0, "blue": 0.01}, settings))
+    assert [v.target_met for v in answer.verdicts] == [False, None, True]
+
+
+def test_a_copy_makes_the_condition_number_infinite() -> None:
+    assert np.isinf(overlap(planned_sample([RED, TWIN])).condition_number)
+    assert overlap(planned_sample([RED, BLUE])).condition_number < 5
+
+
+def test_the_sum_of_a_group_at_few_wavelengths_has_the_flanks_of_its_records() -> None:
+    """The sum's share of a wavelength error comes from the records, not from differences of readings 30 nm apart."""
+    at = ResolveSettings(background=(), wavelengths_nm=(490.0, 520.0, 550.0, 610.0))
+    (group,) = overlap(planned_sample([RED, TWIN, BLUE], {"red": 0.01, "twin": 0.01, "blue": 0.01}, at)).groups
+    alone = planned_sample([RED, BLUE], {"red": 0.0202, "blue": 0.01}, at)
+    expected = np.sqrt(float(alone.expected.u[0, 0] / 0.0202) ** 2 - 0.005**2 + 2 * 0.0025**2)
+    assert group.relative_u == pytest.approx(expected, rel=0.02)

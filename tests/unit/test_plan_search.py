@@ -250,3 +250,31 @@ def test_objectives_by_definition() -> None:
     assert objectives(replace(P, criterion="worst-relative-u"), chosen[None])[0] == pytest.approx(square.max())
     joint = max(np.log(np.linalg.det(C + np.outer(b, b))) for b in bias.T)
     assert objectives(replace(P, criterion="determinant"), chosen[None])[0] == pytest.approx(joint)
+
+
+def test_a_slope_without_an_offset_is_refused() -> None:
+    with pytest.raises(InputError, match="a slope without an offset"):
+        choose_wavelengths(planned_sample(DYES, PLANNED, ResolveSettings(background=("slope",))))
+
+
+def test_what_the_resolver_would_refuse_is_not_chosen_for() -> None:
+    nearly = Component("nearly", W, DYES[0].absorptivity + 1e-5 * DYES[1].absorptivity, basis="mass")
+    with pytest.raises(InputError, match="with all 151 candidates together"):
+        choose_wavelengths(planned_sample([*DYES, nearly], {**PLANNED, "nearly": 0.01}))
+
+
+def test_the_bias_of_a_wavelength_error_is_reported_and_happens() -> None:
+    """At the chosen wavelengths with the axis off: the relative error of plain weighted least squares, component by component."""
+    sample = planned_sample(DYES, PLANNED, ResolveSettings(background=(), noise=NoiseModel(0.0005, 0.0001, 0.0)))
+    asked = WavelengthsAsked(count=3, candidates_nm=[430.0, 450.0, 505.0, 530.0, 600.0, 625.0], wavelength_error_nm=1.0)
+    choice = choose_wavelengths(sample, asked).choice
+    assert choice.criterion**2 == pytest.approx(
+        ((choice.sample.expected.budget[0, :, 0] / choice.sample.concentration) ** 2 + choice.relative_bias**2).max(), rel=0.02
+    )
+    errors = []
+    for shift in (-1.0, 1.0):
+        moved = sum(PLANNED[d.name] * np.interp(choice.wavelength_nm + shift, W, d.absorptivity) for d in DYES)
+        found = np.linalg.solve(choice.sample.design.X, moved)
+        errors.append(np.abs(found / choice.sample.concentration - 1))
+    assert choice.relative_bias == pytest.approx(np.max(errors, axis=0), rel=0.05)
+    assert not choose_wavelengths(sample, WavelengthsAsked(count=3)).choice.relative_bias.any()

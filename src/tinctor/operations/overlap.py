@@ -6,7 +6,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from tinctor.operations.overlap_words import group_words, summary
+from tinctor.operations.overlap_words import NO_SUM, group_words, summary
 from tinctor.operations.plan_in import Plan, PlannedOut, PlanRequest, SpectraOut, finite, planned_flags, planned_out, spectra_out
 from tinctor.operations.provenance import Provenance, provenance
 from tinctor.operations.shared import BudgetPart, FlagOut, Number, ResponseModel
@@ -110,10 +110,14 @@ class OverlapResponse(ResponseModel):
     target_met: bool | None = Field(description="of all components; null without a target")
     components: list[ComponentOverlap]
     similarity: list[list[float]] = Field(description="cosines of the absorptivity spectra, in the order of the components")
-    condition_number: float
+    condition_number: float | None = Field(
+        description="of all fitted columns at unit length; null where one is made up by the others"
+    )
     pairs: list[PairOut] = Field(description="least selective first")
     groups: list[GroupOut]
-    conflicts: list[list[str]] = Field(description="smallest sets that cannot be told apart, whatever the concentrations")
+    conflicts: list[list[str]] = Field(
+        description="smallest sets that cannot be told apart, whatever the concentrations; one alone is imitated by the background"
+    )
     left_out: list[LeftOutOut] = Field(description="each component left out in turn, where not all are separable")
     crossings: list[CrossingOut]
     clear_windows: list[WindowOut]
@@ -156,12 +160,12 @@ def run(request: OverlapRequest) -> OverlapResponse:
         target_met=all(met) if met else None,
         components=[_component(plan, answer, k) for k in range(len(names))],
         similarity=answer.similarity.tolist(),
-        condition_number=answer.condition_number,
+        condition_number=finite(answer.condition_number),
         pairs=[PairOut(components=[names[k] for k in p.places], cosine=p.cosine, selectivity=p.selectivity) for p in answer.pairs],
         groups=[
             GroupOut(
                 components=[names[k] for k in g.places],
-                expected_relative_u=finite(g.relative_u),
+                expected_relative_u=finite(g.relative_u) if g.proportion_error <= NO_SUM else None,
                 proportion_error=finite(g.proportion_error),
                 message=group_words(answer, g),
             )

@@ -9,8 +9,9 @@ import numpy as np
 from tinctor.arrays import quoted
 from tinctor.plan.groups import Group
 from tinctor.plan.overlap import Overlap
+from tinctor.plan.verdict import percent
 
-__all__ = ["group_words", "summary"]
+__all__ = ["NO_SUM", "group_words", "summary"]
 
 #: A sum whose error in other proportions stays below this is a sum.
 SUM_HOLDS: Final = 0.02
@@ -21,18 +22,21 @@ NO_SUM: Final = 0.2
 def summary(answer: Overlap) -> str:
     """Return the answer in one or two sentences: yes or no where there is a target, and which component is in the way."""
     names, target = answer.sample.names, answer.sample.settings.target_relative_u
-    words = {
-        word: [n for n, v in zip(names, answer.verdicts, strict=True) if v.word == word] for word in ("inseparable", "marginal")
-    }
+    verdicts = list(zip(names, answer.verdicts, strict=True))
+    alike = [n for n, v in verdicts if v.word == "inseparable" and v.overlapping]
+    weak = [n for n, v in verdicts if v.word == "inseparable" and not v.overlapping]
+    barely = [n for n, v in verdicts if v.word == "marginal"]
     if target is not None:
         missed = [n for n, v in zip(names, answer.verdicts, strict=True) if v.target_met is False]
         said = f"Yes: every component is expected within {100 * target:.3g} %." if not missed else (
             f"No: {quoted(missed)} would miss {100 * target:.3g} %."
         )  # fmt: skip
-    elif words["inseparable"]:
-        said = f"No: {quoted(words['inseparable'])} cannot be told apart as planned."
-    elif words["marginal"]:
-        said = f"Barely: {quoted(words['marginal'])} can be told from the others with little to spare."
+    elif alike or weak:
+        parts = [f"{quoted(alike)} cannot be told apart as planned"] if alike else []
+        parts += [f"{quoted(weak)} cannot be determined as planned, for reasons other than overlap"] if weak else []
+        said = f"No: {'; '.join(parts)}."
+    elif barely:
+        said = f"Barely: {quoted(barely)} can be determined with little to spare."
     else:
         said = f"Yes: all {len(names)} components can be told apart."
     return " ".join(filter(None, [said, _in_the_way(answer)]))
@@ -61,11 +65,11 @@ def group_words(answer: Overlap, group: Group) -> str:
     members = quoted([answer.sample.names[k] for k in group.places])
     if not np.isfinite(group.relative_u):
         return f"{members} cannot be told apart, and have no sum: leave one out, or separate them first"
-    words = f"{members} can only be reported as a sum, expected within {100 * group.relative_u:.2g} % in the planned proportions"
+    words = f"{members} can only be reported as a sum, expected within {percent(group.relative_u)} % in the planned proportions"
     error = group.proportion_error
     if error <= SUM_HOLDS:
-        return f"{words}, and within {100 * error:.1g} % of that in any other"
+        return f"{words}, and within {percent(error)} % of that in any other"
     if error <= NO_SUM:
-        return f"{words}; in others it is off by up to {100 * error:.2g} %"
-    only = f"their sum holds in the planned proportions only (off by up to {100 * error:.2g} % in others)"
+        return f"{words}; in others it is off by up to {percent(error)} %"
+    only = f"their sum holds in the planned proportions only (off by up to {percent(error)} % in others)"
     return f"{members} cannot be told apart, and {only}"

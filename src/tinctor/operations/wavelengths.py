@@ -42,6 +42,9 @@ class ExpectedU(ResponseModel):
     unit: str
     u: float | None
     relative_u: float | None
+    wavelength_bias_relative: float | None = Field(
+        description="largest relative error that wavelength_error_nm causes; it is in the criterion and not in u; null without one"
+    )
 
 
 class RowOut(ResponseModel):
@@ -65,8 +68,10 @@ class WavelengthsResponse(ResponseModel):
     condition_number: float
     criterion: str
     criterion_value: float | None = Field(description="relative standard uncertainty, of what the choice can change")
-    efficiency: float = Field(description="criterion of all candidates used together over that of the choice")
-    exact: bool = Field(description="proved that no allowed set of this size is better")
+    efficiency: float = Field(
+        description="criterion of all candidates used together over that of the choice; above 1 where flanks do more harm than good"
+    )
+    exact: bool = Field(description="proved that no allowed set of this size is better by the criterion")
     proven_within: float = Field(description="no allowed set is better by a larger share")
     nodes: int = Field(description="parts of the search tree that were looked at")
     all_candidates: int
@@ -152,7 +157,7 @@ def run(request: WavelengthsRequest) -> WavelengthsResponse:
         clear_windows=windows_out(plan),
         planned=planned_out(plan),
         spectra=spectra_out(plan, request.include_spectra),
-        flags=[*planned_flags(plan), *_few_readings(choice)],
+        flags=[*planned_flags(plan), *_of_the_choice(choice)],
         provenance=provenance(request, plan.records, {**plan.settings, **_asked(request)}),
     )
 
@@ -175,14 +180,21 @@ def _expected(plan: Plan, choice: Choice) -> list[ExpectedU]:
             unit=plan.units[k],
             u=finite(e.u[0, k] * plan.factors[k]),
             relative_u=finite(e.u[0, k] / c[k]) if c[k] > 0 else None,
+            wavelength_bias_relative=finite(choice.relative_bias[k]) if choice.relative_bias.any() else None,
         )
         for k, name in enumerate(choice.sample.names)
     ]
 
 
-def _few_readings(choice: Choice) -> list[FlagOut]:
-    """With no reading to spare nothing can be noticed."""
+def _of_the_choice(choice: Choice) -> list[FlagOut]:
+    """What the resolver would flag in the choice, and that with no reading to spare nothing can be noticed."""
+    limit = choice.sample.settings.limits.collinear_flagged
+    alike = [n for n, s in zip(choice.sample.names, choice.sample.expected.selectivity[0], strict=True) if s * limit < 1.0]
+    flags = []
+    if alike:
+        message = f"at these wavelengths the other components take nearly all of the signal of {', '.join(alike)}"
+        flags.append(FlagOut(code="collinear", severity="warning", message=message, components=alike))
     if choice.wavelength_nm.size > choice.sample.design.asked:
-        return []
+        return flags
     message = "no reading is left over to notice an absorber that is not in the model: one or two wavelengths more would show it"
-    return [FlagOut(code="too-few-points", severity="info", message=message)]
+    return [*flags, FlagOut(code="too-few-points", severity="info", message=message)]

@@ -145,5 +145,7 @@ def _runs(mask: np.ndarray, wavelength_nm: FloatArray) -> list[np.ndarray]:
 
 def _window(sample: PlannedSample, place: int | None, run: np.ndarray, best: int, others: FloatArray) -> Window:
     w, total = sample.wavelength_nm, sample.absorbance
-    share = 0.0 if place is None else float(np.max(np.abs(others[run] / (total - others)[run])))
+    own = np.abs((total - others)[run])
+    shares = np.divide(np.abs(others[run]), own, out=np.zeros(run.size), where=own > 0)
+    share = 0.0 if place is None else float(shares.max())
     return Window(place, float(w[run[0]]), float(w[run[-1]]), float(w[best]), float(total[best]), share)

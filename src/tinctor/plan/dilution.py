@@ -37,8 +37,8 @@ AbsorbanceWindow = tuple[float, float]
 AS_GOOD: Final = 0.2
 #: Choices looked at when two are sought.
 MOST_FOR_PAIRS: Final = 200
-#: More ways than this are not a bench.
-MOST_WAYS: Final = 50_000
+#: Readings of all choices held at a time.
+BLOCK_READINGS: Final = 4_000_000
 
 
 @dataclass(frozen=True, slots=True)
@@ -185,10 +185,6 @@ def choose_dilution(sample: PlannedSample, asked: DilutionAsked | None = None) -
             "plan one for each component, in the undiluted sample; or give percent on weight of fibre and the liquor ratio",
         )
     ways = dilutions(asked.pipettes_ml, asked.flasks_ml, asked.steps)
-    if len(ways) * len(asked.cells_cm) > MOST_WAYS:
-        raise InputError.single(
-            "too-much-glassware", ".flasks_ml", f"{len(ways)} dilutions in {len(asked.cells_cm)} cells are more than {MOST_WAYS}"
-        )
     choices = _all_choices(sample, asked, ways)
     serving = sorted((c for c in choices if c.serves_all), key=lambda c: c.worst_relative_u)
     pair = None if serving else _two(choices, asked.absorbance_window[1])
@@ -216,24 +212,28 @@ def on_fibre_g_per_l(percent: float, liquor_ratio_l_per_kg: float) -> float:
 
 
 def _all_choices(sample: PlannedSample, asked: DilutionAsked, ways: Sequence[Dilution]) -> list[DilutionChoice]:
-    """Every dilution in every cell, judged at once."""
-    cells = sorted({float(b) for b in asked.cells_cm})
-    path = np.repeat(cells, len(ways))
-    factor = np.tile([way.factor for way in ways], len(cells))
-    dilution_u = np.tile([way.relative_u for way in ways], len(cells))
+    """Every dilution in every cell, judged in blocks."""
+    pairs = [(way, path) for path in sorted({float(b) for b in asked.cells_cm}) for way in ways]
+    size = max(1, BLOCK_READINGS // sample.wavelength_nm.size)
+    return [choice for start in range(0, len(pairs), size) for choice in _choices(sample, asked, pairs[start : start + size])]
+
+
+def _choices(sample: PlannedSample, asked: DilutionAsked, pairs: Sequence[tuple[Dilution, float]]) -> list[DilutionChoice]:
+    path, factor = np.array([b for _, b in pairs]), np.array([way.factor for way, _ in pairs])
+    E = sample.design.X[:, : len(sample.components)]
     in_cell = sample.concentration * (path / factor)[:, None]
-    absorbance = in_cell @ sample.design.X[:, : len(sample.components)].T
+    absorbance = in_cell @ E.T
     low, high = asked.absorbance_window
     limit = min(high, sample.settings.absorbance_limit)
     settings = replace(sample.settings, absorbance_limit=limit)
-    cell = Cell(factor / path, np.full(path.size, asked.cell_relative_u), dilution_u)
+    cell = Cell(factor / path, np.full(path.size, asked.cell_relative_u), np.array([way.relative_u for way, _ in pairs]))
     expected = forecast(sample.design, sample.components, in_cell, cell, settings, sample.noise_inflation)
     relative, quantified = _judged(sample, expected)
     linear_to = np.array([np.inf if c.linear_to is None else c.linear_to for c in sample.components])
-    top, highest = absorbance.argmax(axis=1), sample.design.X[:, : len(sample.components)].max(axis=0)
+    top, highest = absorbance.argmax(axis=1), E.max(axis=0)
     return [
         DilutionChoice(
-            dilution=ways[k % len(ways)],
+            dilution=way,
             path_length_cm=float(path[k]),
             highest_absorbance=float(absorbance[k, top[k]]),
             highest_nm=float(sample.wavelength_nm[top[k]]),
@@ -244,7 +244,7 @@ def _all_choices(sample: PlannedSample, asked: DilutionAsked, ways: Sequence[Dil
             in_window=bool(low <= absorbance[k, top[k]] <= limit),
             readings_left_out=int((absorbance[k] > limit).sum()),
         )
-        for k in range(path.size)
+        for k, (way, _) in enumerate(pairs)
     ]
 
 
@@ -282,7 +282,8 @@ def _two(choices: list[DilutionChoice], high: float) -> tuple[DilutionChoice, Di
     kept = [c for served in _patterns(useful) for c in useful if c.serves.tolist() == served][:MOST_FOR_PAIRS]
     pairs = []
     for one, two in combinations(kept, 2):
-        if (one.serves | two.serves).all():
+        apart = (one.serves & ~two.serves).any() and (two.serves & ~one.serves).any()
+        if apart and (one.serves | two.serves).all():
             relative = np.fmin(np.where(one.serves, one.relative_u, np.inf), np.where(two.serves, two.relative_u, np.inf))
             pairs.append((float(np.nanmax(relative)), one, two))
     if not pairs:

@@ -34,6 +34,8 @@ FLASKS_ML: Final = (10.0, 25.0, 50.0, 100.0, 250.0, 500.0, 1000.0)
 SAME_FACTOR: Final = 1e-9
 #: A dilution known this well adds nothing to what else is uncertain (by judgement): less volume is better than less uncertainty.
 NEGLIGIBLE_RELATIVE_U: Final = 0.002
+#: More ways than this are not a bench.
+MOST_CHAINS: Final = 250_000
 #: Volumes of glassware from one millilitre in a thousand to the largest flask made.
 VOLUME_LIMITS_ML: Final = (0.001, 20_000.0)
 
@@ -89,6 +91,13 @@ def dilutions(pipettes_ml: Sequence[float], flasks_ml: Sequence[float], most_ste
     """
     _check(pipettes_ml, flasks_ml, most_steps)
     single = [Step(float(p), float(f)) for p, f in product(sorted(set(pipettes_ml)), sorted(set(flasks_ml))) if p < f]
+    if len(single) ** most_steps > MOST_CHAINS:
+        raise InputError.single(
+            "too-much-glassware",
+            ".flasks_ml",
+            f"{len(single)} single steps in {most_steps} steps give more than {MOST_CHAINS} dilutions",
+            "name fewer pipettes and flasks, or ask for one step",
+        )
     chains: list[tuple[Step, ...]] = [(), *((step,) for step in single)]
     if most_steps == 2:
         # a second pipette that would empty the first flask cannot be filled from it
@@ -105,8 +114,11 @@ def _dilution(steps: tuple[Step, ...]) -> Dilution:
     factor, square = 1.0, 0.0
     for step in steps:
         factor *= step.flask_ml / step.pipette_ml
-        square += volume_relative_u(step.pipette_ml, PIPETTE_TOLERANCE_ML) ** 2
         square += volume_relative_u(step.flask_ml, FLASK_TOLERANCE_ML) ** 2
+    for volume in {step.pipette_ml for step in steps}:
+        # one pipette used twice is wrong in the same direction twice; two flasks of one size are two flasks
+        uses = sum(step.pipette_ml == volume for step in steps)
+        square += (uses * volume_relative_u(volume, PIPETTE_TOLERANCE_ML)) ** 2
     return Dilution(factor, sqrt(square), steps)
 
 

@@ -13,9 +13,11 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from tinctor.arrays import FloatArray
+from tinctor.axis import resample
 from tinctor.component import Component
 from tinctor.plan.sample import PlannedSample
 from tinctor.plan.verdict import Verdict, partners
+from tinctor.resolve.design import shape_variance
 
 __all__ = ["Group", "groups_of"]
 
@@ -72,21 +74,33 @@ def _group(sample: PlannedSample, places: tuple[int, ...]) -> Group:
     )
     if not together.expected.determined[0, 0]:
         return Group(places, np.nan, np.zeros(0))
-    Rinv, Q = together.design.Rinv, together.design.Q
-    response = Rinv[0] @ (Q.T @ sample.design.X[:, list(places)])
+    weight = _weights(together)[:, None]
+    design = together.design
+    response = np.linalg.lstsq(design.X * weight, sample.design.X[:, list(places)] * weight, rcond=None)[0][0]
     return Group(places, float(together.expected.u[0, 0] / planned.sum()), response)
 
 
+def _weights(sample: PlannedSample) -> FloatArray:
+    """Square roots of the weights that resolving gives the readings."""
+    slope, noise = sample.design.slope @ sample.in_cell, sample.settings.noise
+    variance = noise.reading_variance(sample.absorbance) + (noise.wavelength_nm * slope) ** 2
+    return np.asarray(1.0 / np.sqrt(variance + sample.design.shape_variance @ sample.in_cell**2))
+
+
 def _merged(sample: PlannedSample, places: tuple[int, ...], shares: FloatArray) -> Component:
-    """One component with the mean spectrum, on the planned wavelengths."""
+    """One component with the mean spectrum, on all wavelengths at which any of the members is tabulated."""
     members = [sample.components[k] for k in places]
-    columns = list(places)
+    low, high = max(c.wavelength_nm[0] for c in members), min(c.wavelength_nm[-1] for c in members)
+    axis = np.unique(np.concatenate([c.wavelength_nm for c in members]))
+    axis = axis[(axis >= low) & (axis <= high)]
+    E = np.column_stack([resample(c.wavelength_nm, c.absorptivity, axis) for c in members])
+    shape = np.column_stack([shape_variance(c, axis, dense=False) for c in members])
     scale = np.array([c.scale_relative_u or 0.0 for c in members])
     return Component(
         " + ".join(c.name for c in members),
-        sample.wavelength_nm,
-        sample.design.X[:, columns] @ shares,
+        axis,
+        E @ shares,
         basis=members[0].basis,
-        absorptivity_u=np.sqrt(sample.design.shape_variance[:, columns] @ shares**2),
+        absorptivity_u=np.sqrt(shape @ shares**2),
         scale_relative_u=float(np.sqrt(((scale * shares) ** 2).sum())),
     )

@@ -19,10 +19,10 @@ from tinctor.arrays import FloatArray
 from tinctor.plan.groups import Group, groups_of
 from tinctor.plan.sample import PlannedSample
 from tinctor.plan.verdict import Verdict, verdict_of
-from tinctor.resolve.design import condition_number, orthonormal_factors
+from tinctor.resolve.design import orthonormal_factors
 from tinctor.resolve.settings import BACKGROUND_TERMS
 
-__all__ = ["LeftOut", "Overlap", "Pair", "net_analyte_signal", "overlap"]
+__all__ = ["LeftOut", "Overlap", "Pair", "columns_of", "net_analyte_signal", "overlap", "scaled_condition"]
 
 #: Sets of components gone through when looking for the smallest that cannot be told apart.
 LARGEST_ENUMERATED: Final = 12
@@ -50,9 +50,24 @@ def net_analyte_signal(X: FloatArray) -> tuple[FloatArray, FloatArray]:
     return sensitivity, np.divide(sensitivity, length, out=np.zeros_like(length), where=length > 0)
 
 
+def scaled_condition(X: FloatArray) -> float:
+    """Return the ratio of the largest to the smallest singular value of the columns of X (m, q) at unit length; infinite where one
+    of them is made up by the others.
+
+    Examples
+    --------
+    >>> round(scaled_condition(np.array([[3.0, 0.0], [4.0, 1.0]])), 6), scaled_condition(np.ones((3, 2)))
+    (3.0, inf)
+    """
+    if not orthonormal_factors(X)[2].all():
+        return float("inf")
+    sizes = np.linalg.svd(X / np.sqrt(np.einsum("ij,ij->j", X, X)), compute_uv=False)
+    return float(sizes[0] / sizes[-1])
+
+
 @dataclass(frozen=True, slots=True)
 class Pair:
-    """Two components and the background alone: cosine, and the selectivity that each would have (it is the same for both)."""
+    """Two components and the linear background alone: cosine, and the smaller of the selectivities they would have."""
 
     places: tuple[int, int]
     cosine: float
@@ -80,7 +95,7 @@ class Overlap:
     similarity : array (p, p)
         Cosines of the absorptivity spectra over the wavelengths read.
     condition_number
-        Of all fitted columns at unit length.
+        Of all fitted columns at unit length; infinite where one is made up by the others.
     sensitivity : array (p,)
         Length of the net analyte signal per unit (mol/L or g/L) in the original sample: absorbance.
     selectivity, variance_inflation : arrays (p,)
@@ -149,14 +164,14 @@ def overlap(sample: PlannedSample) -> Overlap:
     (['separable', 'separable'], array([0.58, 0.58]))
     """
     p = len(sample.components)
-    X = _columns(sample)
+    X = columns_of(sample)
     sensitivity, selectivity = net_analyte_signal(X)
     with np.errstate(divide="ignore"):
         inflation = 1.0 / selectivity[:p] ** 2
     return Overlap(
         sample=sample,
         similarity=_cosines(sample.design.X[:, :p]),
-        condition_number=condition_number(sample.design),
+        condition_number=scaled_condition(X),
         sensitivity=sensitivity[:p] / float(sample.cell.factor[0]),
         selectivity=selectivity[:p],
         variance_inflation=inflation,
@@ -167,8 +182,8 @@ def overlap(sample: PlannedSample) -> Overlap:
     )
 
 
-def _columns(sample: PlannedSample) -> FloatArray:
-    """All that is fitted, (m, q): components, background, and with a shift its column at the planned concentrations."""
+def columns_of(sample: PlannedSample) -> FloatArray:
+    """Return all that is fitted, (m, q): components, background, and with a shift its column at the planned concentrations."""
     design = sample.design
     return np.column_stack([design.X, design.slope @ sample.in_cell]) if design.shift else design.X
 
@@ -219,13 +234,14 @@ def _without(sample: PlannedSample, k: int) -> LeftOut:
 
 
 def _conflicts(sample: PlannedSample) -> tuple[tuple[int, ...], ...]:
-    """Smallest sets, none holding another, in which overlap takes more than the resolver allows."""
+    """Smallest sets, none holding another, in which overlap with one another and the background takes more than the resolver
+    allows; a single component is one that the background imitates."""
     p = len(sample.components)
     limit = sample.settings.limits.collinear_refused
     found: list[tuple[int, ...]] = []
     # in the coordinates of the orthonormal basis lengths and angles are the same, and the columns short
     X = sample.design.Q.T @ sample.design.X
-    for size in range(2, p + 1 if p <= LARGEST_ENUMERATED else 4):
+    for size in range(1, p + 1 if p <= LARGEST_ENUMERATED else 4):
         for places in combinations(range(p), size):
             if any(set(known) <= set(places) for known in found):
                 continue

@@ -168,7 +168,7 @@ def _struck(problem: Problem, oracle: Oracle, mask: np.ndarray, mixture: Mixture
     if mixture.gains.size == 0:
         return mask
     through = oracle.through(mixture.gains, mask)
-    bounds = bound_from(problem, mixture.limit, np.where(through > 0, through, np.nan))
+    bounds = bound_from(problem, mixture.limit, np.where(through > 0, through + mixture.ridge, np.nan))
     return np.asarray(mask & (np.nan_to_num(bounds, nan=np.inf) < best.to_beat))
 
 

@@ -19,7 +19,7 @@ from tinctor.plan.sample import PlannedSample
 from tinctor.resolve.forecast import QUANTIFICATION_RELATIVE_U
 from tinctor.resolve.uncertainty import SOURCES
 
-__all__ = ["Verdict", "VerdictWord", "overlap_relative_u", "partners", "verdict_of"]
+__all__ = ["Verdict", "VerdictWord", "overlap_relative_u", "partners", "percent", "verdict_of"]
 
 VerdictWord = Literal["separable", "marginal", "inseparable"]
 
@@ -43,15 +43,15 @@ def verdict_of(sample: PlannedSample, k: int) -> Verdict:
     """Return the verdict on component k of a planned sample."""
     expected, limits = sample.expected, sample.settings.limits
     if not sample.design.X[:, k].any():
-        return Verdict("inseparable", "it absorbs nowhere at the wavelengths read", _target(sample, np.inf))
+        return Verdict("inseparable", "it absorbs nowhere at the wavelengths read", _target(sample, k, np.inf))
     left = int(expected.points[0])
     if left < sample.wavelength_nm.size and not expected.determined[0, k]:
         limit = sample.settings.absorbance_limit
         words = f"only {left} of {sample.wavelength_nm.size} readings are at or below absorbance {limit:g}, and do not determine it"
-        return Verdict("inseparable", f"{words}: dilute or use a shorter cell", _target(sample, np.inf))
+        return Verdict("inseparable", f"{words}: dilute or use a shorter cell", _target(sample, k, np.inf))
     selectivity = float(expected.selectivity[0, k])
     if selectivity * limits.collinear_refused < 1.0 or not expected.determined[0, k]:
-        return Verdict("inseparable", _taken(sample, k, selectivity), _target(sample, np.inf), overlapping=True)
+        return Verdict("inseparable", _taken(sample, k, selectivity), _target(sample, k, np.inf), overlapping=True)
     c, u = float(sample.concentration[k]), float(expected.u[0, k])
     flagged = selectivity * limits.collinear_flagged < 1.0
     if c == 0:
@@ -59,7 +59,7 @@ def verdict_of(sample: PlannedSample, k: int) -> Verdict:
         return Verdict(
             word, _taken(sample, k, selectivity) if flagged else "none of it is planned; see its limits", overlapping=flagged
         )
-    relative, met = u / c, _target(sample, u / c)
+    relative, met = u / c, _target(sample, k, u / c)
     if c < expected.decision_limit[0, k]:
         words = f"the planned concentration is {c / expected.decision_limit[0, k]:.2g} of its decision limit"
         return Verdict("inseparable", f"{words}: {_main_source(sample, k)}", met, overlapping=_is_overlap(sample, k))
@@ -68,9 +68,9 @@ def verdict_of(sample: PlannedSample, k: int) -> Verdict:
     if flagged:
         return Verdict("marginal", _taken(sample, k, selectivity), met, overlapping=True)
     if relative > QUANTIFICATION_RELATIVE_U:
-        words = f"the planned concentration is below its quantification limit: expected {100 * relative:.2g} %"
+        words = f"the planned concentration is below its quantification limit: expected {percent(relative)} %"
         return Verdict("marginal", f"{words}, {_main_source(sample, k)}", met, overlapping=_is_overlap(sample, k))
-    return Verdict("separable", f"expected {100 * relative:.2g} %, {_main_source(sample, k)}", met)
+    return Verdict("separable", f"expected {percent(relative)} %, {_main_source(sample, k)}", met)
 
 
 def overlap_relative_u(sample: PlannedSample, k: int) -> float:
@@ -94,15 +94,27 @@ def partners(sample: PlannedSample, k: int) -> list[str]:
     return [names[j] for j in order if correlation[j] >= EXCHANGED]
 
 
-def _target(sample: PlannedSample, relative: float) -> bool | None:
+def percent(share: float) -> str:
+    """Return a share as per cent to two figures, in plain digits.
+
+    Examples
+    --------
+    >>> percent(0.0123), percent(1.04), percent(0.999)
+    ('1.2', '100', '100')
+    """
+    return f"{float(f'{100 * share:.2g}'):g}"
+
+
+def _target(sample: PlannedSample, k: int, relative: float) -> bool | None:
+    """Whether the target is met; nothing is asked of a component of which nothing is planned."""
     target = sample.settings.target_relative_u
-    return None if target is None else bool(relative <= target)
+    return None if target is None or sample.concentration[k] == 0 else bool(relative <= target)
 
 
 def _target_missed(sample: PlannedSample, k: int, relative: float) -> Verdict:
     target = sample.settings.target_relative_u
     assert target is not None
-    words = f"expected {100 * relative:.2g} % misses the target of {100 * target:.2g} %: {_main_source(sample, k)}"
+    words = f"expected {percent(relative)} % misses the target of {percent(target)} %: {_main_source(sample, k)}"
     if overlap_relative_u(sample, k) > target:
         return Verdict("inseparable", words, False, overlapping=_is_overlap(sample, k))
     return Verdict("marginal", f"{words}; better separation would not mend it", False)
@@ -112,7 +124,7 @@ def _taken(sample: PlannedSample, k: int, selectivity: float) -> str:
     by = partners(sample, k) or [n for n in sample.names if n != sample.names[k]]
     if selectivity * 1e6 < 1.0:
         return f"its spectrum is made up by {quoted(by)}"
-    return f"{quoted(by)} take all but {100 * selectivity:.2g} % of its signal"
+    return f"{quoted(by)} take all but {percent(selectivity)} % of its signal"
 
 
 def _is_overlap(sample: PlannedSample, k: int) -> bool:
@@ -125,8 +137,11 @@ def _main_source(sample: PlannedSample, k: int) -> str:
     budget = sample.expected.budget[0, k]
     largest = int(np.argmax(budget))
     words = f"mostly {SOURCES[largest]}"
-    if SOURCES[largest] in AMPLIFIED:
-        times = 1.0 / float(sample.expected.selectivity[0, k])
-        by = partners(sample, k)
-        words += f", {times:.2g} times enlarged by overlap" + (f" with {quoted(by)}" if by else "") if times >= 2 else ""
-    return words
+    times = 1.0 / float(sample.expected.selectivity[0, k])
+    if SOURCES[largest] not in AMPLIFIED or times < 2:
+        return words
+    by = partners(sample, k)
+    beside = f" with {quoted(by)}" if by else ""
+    if SOURCES[largest] == "wavelength":  # how much overlap makes of it depends on the flanks: see % per nm
+        return f"{words}, through overlap{beside}"
+    return f"{words}, {float(f'{times:.2g}'):g} times enlarged by overlap{beside}"

@@ -17,10 +17,11 @@ import numpy as np
 from tinctor.arrays import FloatArray, quoted
 from tinctor.axis import covered, resample
 from tinctor.errors import Fault, InputError
+from tinctor.plan.overlap import columns_of, scaled_condition
 from tinctor.plan.sample import PlannedSample
 from tinctor.plan.search import Found, best_set
 from tinctor.plan.selection import CRITERIA, Criterion, Problem, criterion_value, objectives
-from tinctor.resolve.design import condition_number, orthonormal_factors
+from tinctor.resolve.design import orthonormal_factors, shape_variance
 
 __all__ = ["Choice", "ChosenWavelengths", "WavelengthsAsked", "choose_wavelengths"]
 
@@ -87,9 +88,13 @@ class Choice:
     criterion
         Relative standard uncertainty by the criterion.
     efficiency
-        Criterion of all candidates used together over that of this choice, 0 to 1.
+        Criterion of all candidates used together over that of this choice: 0 to 1, and above 1 where a wavelength error makes
+        candidates on flanks do more harm than good.
+    relative_bias : array (p,)
+        Largest relative error that the wavelength error asked about causes; 0 without one. It is in the criterion and not in the
+        forecast.
     exact
-        Whether it was proved that no allowed set of this size is better.
+        Whether it was proved that no allowed set of this size is better by the criterion.
     proven_within
         No allowed set has a criterion smaller than this one's by a larger share.
     """
@@ -97,6 +102,7 @@ class Choice:
     sample: PlannedSample
     criterion: float
     efficiency: float
+    relative_bias: FloatArray
     exact: bool
     proven_within: float
 
@@ -108,7 +114,7 @@ class Choice:
     @property
     def condition_number(self) -> float:
         """Of all fitted columns at unit length."""
-        return condition_number(self.sample.design)
+        return scaled_condition(columns_of(self.sample))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -161,6 +167,7 @@ def choose_wavelengths(sample: PlannedSample, asked: WavelengthsAsked | None = N
     """
     asked = asked or WavelengthsAsked()
     pool = _pool(sample, asked)
+    _check_told_apart(pool)
     problem = _problem(pool, asked)
     count = _count(pool, asked)
     found = best_set(problem, count)
@@ -195,6 +202,31 @@ def _pool(sample: PlannedSample, asked: WavelengthsAsked) -> PlannedSample:
             "give step_nm, a narrower range, or candidates_nm",
         )
     return pool if usable.all() else pool.at(pool.wavelength_nm[usable])
+
+
+def _check_told_apart(pool: PlannedSample) -> None:
+    """What the resolver would refuse with all candidates together no choice of them can mend."""
+    if "slope" in pool.design.terms and "offset" not in pool.design.terms:
+        raise InputError.single(
+            "slope-alone",
+            ".background",
+            "a slope without an offset is another model on each set of wavelengths: its zero lies in their middle",
+            "fit offset and slope, or neither",
+        )
+    limits, expected = pool.settings.limits, pool.expected
+    alike = [
+        name
+        for k, name in enumerate(pool.names)
+        if expected.points[0] >= pool.design.asked and expected.selectivity[0, k] * limits.collinear_refused < 1.0
+    ]
+    if alike:
+        raise InputError.single(
+            "inseparable",
+            ".components",
+            f"{quoted(alike)} cannot be told from the other components and background terms with all {pool.wavelength_nm.size} "
+            "candidates together",
+            "`tinctor overlap` says which can only be reported together; leave one out or drop the background term",
+        )
 
 
 def _check_seen(pool: PlannedSample, usable: np.ndarray) -> None:
@@ -240,19 +272,12 @@ def _problem(pool: PlannedSample, asked: WavelengthsAsked) -> Problem:
         )
     design, noise = pool.design, pool.settings.noise
     A, slope = pool.absorbance, design.slope @ pool.in_cell
-    variance = noise.reading_variance(A) + (noise.wavelength_nm * slope) ** 2 + design.shape_variance @ pool.in_cell**2
+    # each reading by itself: a choice is sparse, and what neighbours share in a dense axis does not concern it
+    shape = np.column_stack([shape_variance(c, pool.wavelength_nm, dense=False) for c in pool.components])
+    variance = noise.reading_variance(A) + (noise.wavelength_nm * slope) ** 2 + shape @ pool.in_cell**2
     weight = 1.0 / np.sqrt(variance)
-    columns = np.column_stack([design.X, slope]) if design.shift else design.X
-    Q, Rinv, independent = orthonormal_factors(columns * weight[:, None])
-    if not independent.all():
-        names = [*pool.names, *design.terms, "shift"]
-        alike = [names[k] for k in np.flatnonzero(~independent)]
-        raise InputError.single(
-            "inseparable",
-            ".components",
-            f"{quoted(alike)} cannot be told from the other components and background terms at any of the {A.size} candidates",
-            "`tinctor overlap` says which can only be reported together; leave one out or drop the background term",
-        )
+    Q, Rinv, independent = orthonormal_factors(columns_of(pool) * weight[:, None])
+    assert independent.all(), "what is dependent was refused"
     s = pool.in_cell
     scale = np.where(s > 0, s, 1.0)
     shifted = None if asked.wavelength_error_nm == 0 else _shifted(pool, asked.wavelength_error_nm) * weight[:, None]
@@ -317,10 +342,21 @@ def _row(pool: PlannedSample, problem: Problem, k: int, best: float) -> Choice |
 def _choice(pool: PlannedSample, problem: Problem, found: Found, best: float) -> Choice:
     value, bound = (criterion_value(problem, objective) for objective in (found.objective, found.bound))
     read_there = pool.at(pool.wavelength_nm[found.chosen])
-    return Choice(read_there, value, best / value, found.exact, max(0.0, 1.0 - bound / value))
+    bias = _relative_bias(problem, found.chosen)
+    return Choice(read_there, value, best / value, bias, found.exact, max(0.0, 1.0 - bound / value))
 
 
 def _choice_of_all(pool: PlannedSample, problem: Problem) -> Choice:
-    """All candidates, whatever their spacing. With a wavelength error some choices can be better: then they are the measure."""
-    value = criterion_value(problem, float(objectives(problem, np.arange(problem.n)[None])[0]))
-    return Choice(pool, value, 1.0, True, 0.0)
+    """All candidates, whatever their spacing. With a wavelength error a choice can be better than all of them, and its efficiency
+    above 1: candidates on flanks do more harm than good."""
+    whole = np.arange(problem.n)
+    value = criterion_value(problem, float(objectives(problem, whole[None])[0]))
+    return Choice(pool, value, 1.0, _relative_bias(problem, whole), True, 0.0)
+
+
+def _relative_bias(problem: Problem, chosen: np.ndarray) -> FloatArray:
+    if problem.shifted is None:
+        return np.zeros(len(problem.T))
+    Z = problem.Z[chosen]
+    bias = problem.T @ np.linalg.solve(Z.T @ Z, Z.T @ problem.shifted[chosen])
+    return np.asarray(np.abs(bias).max(axis=1))

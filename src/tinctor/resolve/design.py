@@ -26,6 +26,7 @@ __all__ = [
     "dependent_components",
     "median_step",
     "orthonormal_factors",
+    "shape_variance",
     "usable_wavelengths",
 ]
 
@@ -154,7 +155,7 @@ def build_design(wavelength_nm: FloatArray, components: Sequence[Component], bac
     curvature = [
         resample(c.wavelength_nm, derivative(c.wavelength_nm, de), wavelength_nm) for c, de in zip(components, slopes, strict=True)
     ]
-    variance = [_shape_variance(c, wavelength_nm) for c in components]
+    variance = [shape_variance(c, wavelength_nm) for c in components]
     terms = tuple(term for term in background if term != "shift")
     shapes = [_background_shape(term, wavelength_nm) for term in terms]
     return _factored(
@@ -242,18 +243,18 @@ def _factored(
     return Design(names, terms, wavelength_nm, X, slope, curvature, shape_variance, independent, Q, Rinv, non_negative, shift)
 
 
-def _shape_variance(component: Component, wavelength_nm: FloatArray) -> FloatArray:
-    """Squared uncertainty of a resampled absorptivity: as stated, plus what interpolation adds.
+def shape_variance(component: Component, wavelength_nm: FloatArray, *, dense: bool = True) -> FloatArray:
+    """Return the squared uncertainty of a resampled absorptivity, (m,): as stated, plus what interpolation adds.
 
     Errors of neighbouring readings between two tabulated points are shared, so a finer axis brings no new information:
-    the variance is scaled up by the ratio of the steps.
+    the variance is scaled up by the ratio of the steps, unless the readings are few of that axis (`dense` false).
     """
     between = interpolation_u(component.wavelength_nm, component.absorptivity, wavelength_nm) ** 2
     if component.absorptivity_u is None:
         return between
     stated = np.interp(wavelength_nm, component.wavelength_nm, component.absorptivity_u) ** 2
     steps = (median_step(component.wavelength_nm), median_step(wavelength_nm))
-    finer = steps[0] / steps[1] if min(steps) > 0 else 1.0
+    finer = steps[0] / steps[1] if dense and min(steps) > 0 else 1.0
     return stated * max(1.0, finer) + between
 
 
