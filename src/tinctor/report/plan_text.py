@@ -65,12 +65,18 @@ def wavelengths_text(response: WavelengthsResponse) -> str:
         *_planned(response.planned),
         "",
     ]
-    heading = [("", "component"), ("expected u, %", "as chosen"), ("", "all candidates")]
-    rows = [
-        [(printable(one.name), ""), (_percent(one.relative_u), ""), (_percent(every.relative_u), "")]
-        for one, every in zip(response.expected_u, response.expected_u_all_candidates, strict=True)
+    both = list(zip(response.expected_u, response.expected_u_all_candidates, strict=True))
+    columns = [
+        (("", "component"), [printable(one.name) for one, _ in both]),
+        (("expected u, %", "as chosen"), [_percent(one.relative_u) for one, _ in both]),
+        (("", "all candidates"), [_percent(every.relative_u) for _, every in both]),
     ]
-    lines += [*text_table(heading, rows, right=[False, True, True], colour=False), ""]
+    if any(one.wavelength_bias_relative is not None for one, _ in both):
+        columns.append((("bias by axis, %", "as chosen"), [_percent(one.wavelength_bias_relative) for one, _ in both]))
+        columns.append((("", "all candidates"), [_percent(every.wavelength_bias_relative) for _, every in both]))
+    rows = [[(cell, "") for cell in row] for row in zip(*(cells for _, cells in columns), strict=True)]
+    right = [False, *([True] * (len(columns) - 1))]
+    lines += [*text_table([head for head, _ in columns], rows, right=right, colour=False), ""]
     heading = [("", "count"), ("criterion", "%"), ("worst", "u, %"), ("", "efficiency"), ("", "wavelengths, nm")]
     table = [
         [
