@@ -38,18 +38,27 @@ def every_set(P: Problem, k: int) -> np.ndarray:
     return sets[gaps >= P.spacing_nm - 1e-9]
 
 
+#: Sizes of the sets asked for so far, for the start that a test puts in place of the exchange.
+KS: list[int] = []
+
+
 @pytest.mark.parametrize("block", range(10))
 def test_branch_and_bound_is_brute_force(block: int, monkeypatch: pytest.MonkeyPatch) -> None:
     """500 random problems, all criteria, with and without spacing and wavelength error; nodes are small: it must branch."""
     monkeypatch.setattr(search, "FEW_SETS", 12)
     monkeypatch.setattr(search, "ALL_SETS", 0)
     monkeypatch.setattr(search, "BIASED_SHARE", 1)
+    alone = bool(block % 2)
+    if alone:  # a poor start and no sets met on the way: the tree by itself, so that exchange cannot hide what it loses
+        monkeypatch.setattr(search, "_exchanged", lambda problem, chosen: every_set(problem, KS[-1])[-1])
+        monkeypatch.setattr(search, "relax", lambda *rest: relax(*rest)[:0])
     rng = np.random.default_rng(100 + block)
     exact, branched, spaced_out = 0, 0, 0
     for trial in range(50):
         n, p, offset = int(rng.integers(6, 13)), int(rng.integers(1, 4)), bool(rng.integers(2))
         k = int(rng.integers(p + offset, min(n - 1, p + offset + 3) + 1))
-        error_nm = 0.2 if trial % 4 == 0 else 0.0
+        KS.append(k)
+        error_nm = 0.2 if trial % 4 == 0 and not alone else 0.0
         P = problem(
             rng, n, p, CRITERIA[trial % 3], offset=offset, spacing_nm=float(rng.choice([0.0, 25.0, 40.0])), error_nm=error_nm
         )
@@ -278,3 +287,22 @@ def test_the_bias_of_a_wavelength_error_is_reported_and_happens() -> None:
         errors.append(np.abs(found / choice.sample.concentration - 1))
     assert choice.relative_bias == pytest.approx(np.max(errors, axis=0), rel=0.05)
     assert not choose_wavelengths(sample, WavelengthsAsked(count=3)).choice.relative_bias.any()
+
+
+@pytest.mark.parametrize("criterion", CRITERIA)
+@pytest.mark.parametrize("error_nm", [0.0, 0.3])
+def test_values_of_exchanges_are_those_of_the_sets(criterion: Criterion, error_nm: float) -> None:
+    """The rank-one update against each set judged by itself; k above the unknowns and equal to them."""
+    rng = np.random.default_rng(6)
+    for k in (4, 6):
+        P = problem(rng, 20, 3, criterion, offset=True, spacing_nm=20.0, error_nm=error_nm)
+        chosen = np.array([0, 4, 9, 14, 17, 19][:k])
+        values = search._exchange_values(P, chosen)
+        for t in range(k):
+            for i in range(20):
+                swapped = np.array([*np.delete(chosen, t), i])
+                apart = np.abs(P.wavelength_nm[i] - P.wavelength_nm[np.delete(chosen, t)]).min()
+                if apart < 20.0 - 1e-9:
+                    assert values[t, i] == np.inf
+                else:
+                    assert values[t, i] == pytest.approx(objectives(P, swapped[None])[0], rel=1e-5, abs=1e-9)

@@ -195,7 +195,10 @@ def _reweigh(problem: Problem, mixture: Mixture, informations: FloatArray) -> Fl
         if problem.criterion == "worst-relative-u":
             raised = np.maximum(mixture.priorities * variances / variances.max(), SMALLEST_PRIORITY)
             mixture.priorities = raised / raised.sum()
-        pull = np.maximum(np.einsum("vij,ij->v", informations, G) / max(float((M * G).sum()), 1e-300), 1e-12)
+        whole = float((M * G).sum())
+        if not 1e-100 < whole < 1e100:  # a mixture that all but leaves a coefficient undetermined: no share is better than another
+            break
+        pull = np.clip(np.einsum("vij,ij->v", informations, G) / whole, 1e-12, 1e12)
         mixture.shares = mixture.shares * pull**power
         mixture.shares /= mixture.shares.sum()
     keep = mixture.shares > 1e-6

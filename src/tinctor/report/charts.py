@@ -151,7 +151,7 @@ def _spectra(axes: Axes, spectra: SpectraOut, quantity: str) -> None:
         top = max(range(len(values)), key=values.__getitem__)
         axes.annotate(
             _plain(name), (spectra.wavelength_nm[top], values[top]), textcoords="offset points", xytext=(0, 3), ha="center",
-            color=colour, fontsize=8, bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.5, "alpha": 0.8},
+            fontsize=8, bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.5, "alpha": 0.8},
         )  # fmt: skip
     axes.set_xlabel("wavelength / nm")
     axes.set_ylabel(f"{quantity} / ({', '.join(units)})")
