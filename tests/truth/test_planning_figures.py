@@ -21,6 +21,8 @@ from tinctor import (
     SpectrumBatch,
     WavelengthsAsked,
     choose_wavelengths,
+    crossings,
+    load_collection,
     overlap,
     planned_sample,
     resolve_batch,
@@ -119,6 +121,17 @@ def test_sensitivity_of_close_dyes_to_a_wavelength_error(apart_nm: float, percen
     moved = 0.3 * sum(np.exp(-0.5 * ((w + 0.1 - at) / 28.0) ** 2) for at in (530.0, 530.0 + apart_nm))
     found = resolve_batch(SpectrumBatch(["a"], w, moved[None]), dyes, ResolveSettings(background=())).unconstrained[0]
     assert 1000 * (found / 0.3 - 1) == pytest.approx(per_nm, rel=0.05)
+
+
+def test_isosbestic_points_of_haemoglobin() -> None:
+    """Oxy- and deoxyhaemoglobin absorb equally at 529, 545, 570 and 584 nm in the visible (textbook values, from memory)."""
+    library_ = load_collection("published")
+    forms = [library_.component(name) for name in ("oxyhaemoglobin", "deoxyhaemoglobin")]
+    found = crossings(planned_sample(forms, None, ResolveSettings(wavelength_range_nm=(510.0, 600.0))))
+    assert [c.wavelength_nm for c in found] == pytest.approx([529.0, 545.0, 570.0, 584.0], abs=1.0)
+    assert all(c.isosbestic for c in found)
+    other = [forms[0], library_.component("methylene-blue")]
+    assert not any(c.isosbestic for c in crossings(planned_sample(other))), "negative control: not forms of one analyte"
 
 
 def cu_ni(reference: Path) -> Any:

@@ -267,3 +267,11 @@ def test_the_sum_of_a_group_at_few_wavelengths_has_the_flanks_of_its_records() -
     alone = planned_sample([RED, BLUE], {"red": 0.0202, "blue": 0.01}, at)
     expected = np.sqrt(float(alone.expected.u[0, 0] / 0.0202) ** 2 - 0.005**2 + 2 * 0.0025**2)
     assert group.relative_u == pytest.approx(expected, rel=0.02)
+
+
+def test_an_uncertain_record_is_not_blamed_on_overlap() -> None:
+    rough = [dye("a", 450.0, scale_relative_u=0.15), dye("b", 560.0, scale_relative_u=0.15)]
+    answer = overlap(planned_sample([*rough, BLUE]))
+    assert {v.word for v in answer.verdicts} == {"separable"}
+    assert "mostly library-scale" in answer.verdicts[0].reason
+    assert np.isfinite(answer.sample.expected.quantification_limit).all()

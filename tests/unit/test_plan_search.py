@@ -306,3 +306,22 @@ def test_values_of_exchanges_are_those_of_the_sets(criterion: Criterion, error_n
                     assert values[t, i] == np.inf
                 else:
                     assert values[t, i] == pytest.approx(objectives(P, swapped[None])[0], rel=1e-5, abs=1e-9)
+
+
+def test_weights_of_the_criterion_hold_flanks_and_the_library_s_shape() -> None:
+    """The criterion of one set, from the documented variance of a reading worked out here."""
+    e_u = 0.3
+    dyes = [Component(d.name, W, d.absorptivity, basis="mass", absorptivity_u=e_u + 0 * W) for d in DYES]
+    noise = NoiseModel(0.0005, 0.0001, 0.3)
+    at = [430.0, 450.0, 500.0, 530.0, 600.0, 630.0]
+    sample = planned_sample(dyes, PLANNED, ResolveSettings(background=("offset",), noise=noise))
+    choice = choose_wavelengths(sample, WavelengthsAsked(count=6, candidates_nm=at, criterion="trace")).choice
+    c = np.array(list(PLANNED.values()))
+    places = np.searchsorted(W, at)
+    E = np.column_stack([d.absorptivity for d in dyes])
+    slope = (np.gradient(E, W, axis=0) @ c)[places]
+    A = E[places] @ c
+    v = 0.0005**2 + (0.0001 * 10**A / np.log(10)) ** 2 + (0.3 * slope) ** 2 + e_u**2 * (c @ c)
+    X = np.column_stack([E[places], np.ones(6)])
+    C = np.linalg.inv(X.T @ (X / v[:, None]))[:3, :3] / np.outer(c, c)
+    assert choice.criterion == pytest.approx(np.sqrt(np.trace(C) / 3), rel=1e-3)

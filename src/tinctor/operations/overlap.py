@@ -45,7 +45,7 @@ class ComponentOverlap(ResponseModel):
     budget: list[BudgetPart]
     decision_limit: float | None
     detection_limit: float | None
-    quantification_limit: float | None = Field(description="relative standard uncertainty of 10 %")
+    quantification_limit: float | None = Field(description="ten times the standard uncertainty at zero (k_Q = 10, Currie 1995)")
     price: dict[str, float | None] = Field(description="factor on expected_u of each background term that could be added")
     price_of_fitted: dict[str, float | None] = Field(description="the same of each term that is fitted, against leaving it out")
     verdict: VerdictWord

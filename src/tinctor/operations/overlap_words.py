@@ -51,7 +51,7 @@ def _in_the_way(answer: Overlap) -> str:
         for part in answer.left_out
         if part.verdicts and all((v.target_met is not False) if with_target else v.word == "separable" for v in part.verdicts)
     ]
-    if not answer.left_out:
+    if not answer.left_out or not any(v.overlapping for v in answer.verdicts):
         return ""
     if not alone:
         return "Leaving out one component would not do."

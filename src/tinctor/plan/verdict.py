@@ -2,7 +2,7 @@
 
 inseparable   the resolver would refuse it, or would not detect it at the planned concentration, or what overlap amplifies
               (noise, library shape, wavelength) misses the target by itself
-marginal      the resolver would flag it, or its uncertainty exceeds a tenth, or the target is missed for reasons that
+marginal      the resolver would flag it, or it lies below its quantification limit, or the target is missed for reasons that
               better separation would not mend (library scale, path, dilution)
 separable     otherwise
 """
@@ -16,7 +16,6 @@ import numpy as np
 
 from tinctor.arrays import quoted
 from tinctor.plan.sample import PlannedSample
-from tinctor.resolve.forecast import QUANTIFICATION_RELATIVE_U
 from tinctor.resolve.uncertainty import SOURCES
 
 __all__ = ["Verdict", "VerdictWord", "overlap_relative_u", "partners", "percent", "verdict_of"]
@@ -67,7 +66,7 @@ def verdict_of(sample: PlannedSample, k: int) -> Verdict:
         return _target_missed(sample, k, relative)
     if flagged:
         return Verdict("marginal", _taken(sample, k, selectivity), met, overlapping=True)
-    if relative > QUANTIFICATION_RELATIVE_U:
+    if c < expected.quantification_limit[0, k]:
         words = f"the planned concentration is below its quantification limit: expected {percent(relative)} %"
         return Verdict("marginal", f"{words}, {_main_source(sample, k)}", met, overlapping=_is_overlap(sample, k))
     return Verdict("separable", f"expected {percent(relative)} %, {_main_source(sample, k)}", met)

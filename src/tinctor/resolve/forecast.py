@@ -22,7 +22,8 @@ from tinctor.resolve.uncertainty import Cell, estimates, limits_of_detection
 
 __all__ = ["QUANTIFICATION_RELATIVE_U", "Forecast", "forecast"]
 
-#: Relative standard uncertainty at the quantification limit (k_Q = 10: Currie, Pure Appl. Chem. 67 (1995) 1699).
+#: Relative standard uncertainty at the quantification limit (k_Q = 10: Currie, Pure Appl. Chem. 67 (1995) 1699), from the sources
+#: that do not grow with the concentration: library scale, path and dilution are not mended by more of it.
 QUANTIFICATION_RELATIVE_U: Final = 0.1
 
 
@@ -37,8 +38,10 @@ class Forecast:
         In the order of `tinctor.resolve.uncertainty.SOURCES`.
     covariance, correlation : arrays (n, p, p)
         Of all sources; of the fit alone.
-    decision_limit, detection_limit, quantification_limit : arrays (n, p)
-        Infinite where the uncertainty that grows with the concentration is too large by itself.
+    decision_limit, detection_limit : arrays (n, p)
+        The second is infinite where the uncertainty that grows with the concentration is too large by itself.
+    quantification_limit : array (n, p)
+        Ten times the standard uncertainty at zero.
     relative_per_nm : array (n, p)
     selectivity : array (n, p)
         1 / sqrt(variance inflation) under the weights of the fit; 0 for an exact dependence.
@@ -111,7 +114,6 @@ def forecast(
     selectivity = 1.0 / np.sqrt(e.variance_inflation)
     dependent = dependent_components(design)
     selectivity[:, dependent] = 0.0
-    left = QUANTIFICATION_RELATIVE_U**2 - e.proportional**2
     return Forecast(
         concentration=in_cell * cell.factor[:, None],
         u=np.sqrt(np.maximum(np.einsum("nii->ni", e.covariance), 0.0)),
@@ -120,7 +122,7 @@ def forecast(
         correlation=e.correlation,
         decision_limit=decision,
         detection_limit=detection,
-        quantification_limit=np.where(left > 0, e.u_at_zero / np.sqrt(np.where(left > 0, left, 1.0)), np.inf),
+        quantification_limit=e.u_at_zero / QUANTIFICATION_RELATIVE_U,
         relative_per_nm=e.relative_per_nm,
         selectivity=selectivity,
         points=points.astype(np.float64),
