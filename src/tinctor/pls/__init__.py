@@ -1,0 +1,1 @@
+"""Partial least squares: calibrate on known mixtures, validate, predict with limits. Numbers only."""
