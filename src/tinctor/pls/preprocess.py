@@ -187,7 +187,9 @@ def _inside(step: Step, w: FloatArray) -> slice:
 
 def _even_step(w: FloatArray, window: int) -> float:
     if w.size < window:
-        raise InputError.single("window", ".window", f"the window of {window} readings is longer than the spectra, {w.size} readings")
+        raise InputError.single(
+            "window", ".window", f"the window of {window} readings is longer than the spectra, {w.size} readings"
+        )
     steps = np.diff(w)
     mean = float(steps.mean())
     worst = float(np.abs(steps - mean).max())

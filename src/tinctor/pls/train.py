@@ -129,7 +129,9 @@ def _check(X: FloatArray, Y: FloatArray, components: int) -> None:
     flat = np.flatnonzero(np.ptp(Y, axis=0) == 0)
     if flat.size:
         raise InputError.single(
-            "constant-reference", ".references", f"reference {int(flat[0])} has the same value in all training spectra: nothing to learn"
+            "constant-reference",
+            ".references",
+            f"reference {int(flat[0])} has the same value in all training spectra: nothing to learn",
         )
     if not np.ptp(X, axis=0).any():
         raise InputError.single("constant-spectra", ".spectra", "all training spectra are the same")

@@ -88,7 +88,10 @@ def folds_of(groups: np.ndarray, reference: FloatArray, folds: int | None, seed:
     count = len(ids) if folds is None else folds
     if not 2 <= count <= len(ids):
         raise InputError.single(
-            "folds", ".folds", f"{len(ids)} preparations allow from 2 to {len(ids)} folds, found {count}", "leave-one-group-out always fits"
+            "folds",
+            ".folds",
+            f"{len(ids)} preparations allow from 2 to {len(ids)} folds, found {count}",
+            "leave-one-group-out always fits",
         )
     if folds is None:
         fold = np.arange(len(ids))
