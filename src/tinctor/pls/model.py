@@ -9,7 +9,6 @@ over its degrees of freedom, and u_ref the standard uncertainty of the reference
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -129,6 +128,26 @@ class Model:
     reference_u: FloatArray
     limits: Limits
 
+    def checked(self) -> Model:
+        """Return the model itself when its parts fit together.
+
+        Raises
+        ------
+        InputError
+            Naming the part that does not.
+        """
+        q, h = len(self.names), self.components
+        m = self.steps[-1].wavelength_nm.size if self.steps else self.wavelength_nm.size
+        shapes = {
+            "intercept": (q,), "coefficients": (m, q), "mean_x": (m,), "rotations": (m, h), "loadings": (m, h), "score_variance": (h,),
+            "mse": (q,), "reference_u": (q,),
+        }  # fmt: skip
+        for name, expected in shapes.items():
+            found = getattr(self, name).shape
+            if found != expected:
+                raise InputError.single("damaged-model", f".{name}", f"expected the shape {expected}, found {found}")
+        return self
+
     def on_axis(self, X: FloatArray, wavelength_nm: FloatArray) -> FloatArray:
         """Return spectra on the model's axis; resampled inside the range of theirs, never extrapolated.
 
@@ -183,8 +202,3 @@ class Model:
     def _u(self, leverage: FloatArray) -> FloatArray:
         whole = (1.0 + leverage)[:, None] * self.mse
         return np.asarray(np.sqrt(np.maximum(whole - self.reference_u**2, leverage[:, None] * self.mse)))
-
-
-def joined(models: Sequence[Model]) -> tuple[str, ...]:
-    """Return the names of the analytes of several models, in order."""
-    return tuple(name for model in models for name in model.names)
