@@ -16,6 +16,7 @@ from tinctor import (
     overlap,
     planned_sample,
 )
+from tinctor.plan.overlap import net_analyte_signal
 
 W = np.arange(400.0, 701.0)
 
@@ -275,3 +276,19 @@ def test_an_uncertain_record_is_not_blamed_on_overlap() -> None:
     assert {v.word for v in answer.verdicts} == {"separable"}
     assert "mostly library-scale" in answer.verdicts[0].reason
     assert np.isfinite(answer.sample.expected.quantification_limit).all()
+
+
+def test_sensitivity_is_per_unit_of_the_original_sample() -> None:
+    """Ten times more concentrated in the bath, half the path, diluted fifty times: a hundred times less absorbance for a unit."""
+    plain = overlap(planned_sample([RED, BLUE], {"red": 0.01, "blue": 0.01}))
+    bath = overlap(planned_sample([RED, BLUE], {"red": 1.0, "blue": 1.0}, path_length_cm=0.5, dilution_factor=50.0))
+    assert bath.sensitivity == pytest.approx(plain.sensitivity / 100.0, rel=1e-12)
+    assert bath.selectivity == pytest.approx(plain.selectivity, rel=1e-12)
+
+
+def test_a_pair_has_the_smaller_of_its_selectivities_with_the_background() -> None:
+    wide = dye("wide", 550.0, width=90.0)
+    (pair,) = overlap(planned_sample([RED, wide])).pairs
+    both = net_analyte_signal(np.column_stack([RED.absorptivity, wide.absorptivity, np.ones(W.size)]))[1][:2]
+    assert both[0] > 1.3 * both[1]
+    assert pair.selectivity == pytest.approx(both.min(), rel=1e-9)
