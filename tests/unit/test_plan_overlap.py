@@ -292,3 +292,8 @@ def test_a_pair_has_the_smaller_of_its_selectivities_with_the_background() -> No
     both = net_analyte_signal(np.column_stack([RED.absorptivity, wide.absorptivity, np.ones(W.size)]))[1][:2]
     assert both[0] > 1.3 * both[1]
     assert pair.selectivity == pytest.approx(both.min(), rel=1e-9)
+
+
+def test_a_sum_is_resolved_with_the_planned_proportions() -> None:
+    (group,) = overlap(planned_sample([YELLOW, RED, TWIN], {"yellow": 0.01, "red": 0.03, "twin": 0.01})).groups
+    assert group.response == pytest.approx([1 / 1.01, 1.04 / 1.01], rel=1e-9)  # three of red to one of twin, by hand
