@@ -9,6 +9,7 @@ from tinctor import (
     Component,
     Conditions,
     InputError,
+    NoiseModel,
     ResolveSettings,
     clear_windows,
     crossings,
@@ -297,3 +298,23 @@ def test_a_pair_has_the_smaller_of_its_selectivities_with_the_background() -> No
 def test_a_sum_is_resolved_with_the_planned_proportions() -> None:
     (group,) = overlap(planned_sample([YELLOW, RED, TWIN], {"yellow": 0.01, "red": 0.03, "twin": 0.01})).groups
     assert group.response == pytest.approx([1 / 1.01, 1.04 / 1.01], rel=1e-9)  # three of red to one of twin, by hand
+
+
+def test_what_the_resolver_would_flag_is_marginal_however_precise() -> None:
+    close = dye("close", 520.6)
+    noise = NoiseModel(1e-6, 1e-7, 0.0)
+    answer = overlap(planned_sample([RED, close], {"red": 0.02, "close": 0.02}, ResolveSettings(background=(), noise=noise)))
+    selectivity = float(answer.sample.expected.selectivity[0, 0])
+    assert 1 / 100 < selectivity < 1 / 30
+    assert answer.relative_u.max() < 0.02
+    assert [v.word for v in answer.verdicts] == ["marginal", "marginal"]
+    assert "take all but" in answer.verdicts[0].reason
+
+
+def test_too_strong_a_sample_makes_no_group_of_what_is_merely_near() -> None:
+    near = dye("near", 530.0)
+    weak = overlap(planned_sample([RED, near]))
+    assert {v.word for v in weak.verdicts} == {"separable"}
+    strong = overlap(planned_sample([RED, near], {"red": 500.0, "near": 500.0}))
+    assert {v.word for v in strong.verdicts} == {"inseparable"}
+    assert strong.groups == ()
