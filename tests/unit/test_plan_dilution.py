@@ -28,9 +28,8 @@ def test_factors_of_one_and_two_steps() -> None:
 
 
 def test_nothing_is_pipetted_from_a_flask_that_is_too_small() -> None:
-    for d in dilutions([1.0, 10.0, 50.0], [10.0, 100.0], 2):
-        if len(d.steps) == 2:
-            assert d.steps[1].pipette_ml < d.steps[0].flask_ml
+    (chosen,) = [d for d in dilutions([1.0, 50.0], [10.0, 100.0], 2) if d.factor == 20.0]
+    assert [(s.pipette_ml, s.flask_ml) for s in chosen.steps] == [(50.0, 100.0), (1.0, 10.0)]  # not 50 mL out of a 10 mL flask
 
 
 def test_uncertainty_of_a_dilution_by_hand() -> None:

@@ -315,6 +315,7 @@ def test_too_strong_a_sample_makes_no_group_of_what_is_merely_near() -> None:
     near = dye("near", 530.0)
     weak = overlap(planned_sample([RED, near]))
     assert {v.word for v in weak.verdicts} == {"separable"}
-    strong = overlap(planned_sample([RED, near], {"red": 500.0, "near": 500.0}))
+    narrow = ResolveSettings(wavelength_range_nm=(490.0, 560.0))
+    strong = overlap(planned_sample([RED, near], {"red": 500.0, "near": 500.0}, narrow))
     assert {v.word for v in strong.verdicts} == {"inseparable"}
     assert strong.groups == ()
