@@ -312,7 +312,7 @@ def test_what_the_resolver_would_flag_is_marginal_however_precise() -> None:
 
 
 def test_too_strong_a_sample_makes_no_group_of_what_is_merely_near() -> None:
-    near = dye("near", 530.0)
+    near = dye("near", 524.0)
     weak = overlap(planned_sample([RED, near]))
     assert {v.word for v in weak.verdicts} == {"separable"}
     narrow = ResolveSettings(wavelength_range_nm=(490.0, 560.0))
