@@ -290,3 +290,18 @@ def test_strict_means_anything_that_needs_a_look() -> None:
     tinctor("overlap", *DYES, *PLANNED, "--strict", code=5)  # undiluted: saturated, and beyond the linear range
     few = ["dilution", "-l", "palewater-dyehouse", "-c", "bramble-red,tarn-blue", "--planned", "bramble-red=5,tarn-blue=0.01"]
     tinctor(*few, "--unit", "g/L", "--strict", code=5)
+
+
+def test_flags_of_a_plan() -> None:
+    codes = {flag["code"]: flag["message"] for flag in run("overlap")["flags"]}
+    assert set(codes) == {"saturated", "beyond-linear-range"}
+    assert "bramble-red: 17.19 times" in codes["beyond-linear-range"]  # 0.55 g/L in 1 cm against 0.032 g/L cm
+    assert run("overlap", dilution_factor=50)["flags"] == []
+    few = run("overlap", dilution_factor=50, wavelengths_nm=[420, 520, 600, 700])
+    assert [flag["code"] for flag in few["flags"]] == ["too-few-points"]
+
+
+def test_the_uncertainty_of_a_dilution_is_that_of_its_volumes() -> None:
+    choice = run("dilution", pipettes_ml=[10], flasks_ml=[500], steps=1)["choices"][0]
+    relative = ((0.020 / 10) ** 2 + (0.25 / 500) ** 2) ** 0.5 / 6**0.5  # class A, triangular
+    assert choice["dilution_factor_u"] == pytest.approx(50 * relative, rel=1e-9)
