@@ -305,3 +305,18 @@ def test_the_uncertainty_of_a_dilution_is_that_of_its_volumes() -> None:
     choice = run("dilution", pipettes_ml=[10], flasks_ml=[500], steps=1)["choices"][0]
     relative = ((0.020 / 10) ** 2 + (0.25 / 500) ** 2) ** 0.5 / 6**0.5  # class A, triangular
     assert choice["dilution_factor_u"] == pytest.approx(50 * relative, rel=1e-9)
+
+
+def test_a_component_of_which_nothing_is_planned_can_still_be_in_the_way() -> None:
+    a, b = inline("a", [1, 9, 3, 1, 0, 0]), inline("b", [2, 18, 6, 2, 0, 0])
+    request = {
+        "schema": "overlap/1",
+        "background": [],
+        "components": [a, b],
+        "target_relative_u": 0.05,
+        "concentration_unit": "mol/L",
+    }
+    answer = run_document("overlap", {**request, "concentrations": {"a": 0.05, "b": 0.0}})
+    assert answer["summary"] == "No: 'a' would miss 5 %. 'b' could not be told from the others."
+    assert [c["target_met"] for c in answer["components"]] == [False, None]
+    assert answer["condition_number"] is None
