@@ -290,3 +290,33 @@ def test_strict_means_anything_that_needs_a_look() -> None:
     tinctor("overlap", *DYES, *PLANNED, "--strict", code=5)  # undiluted: saturated, and beyond the linear range
     few = ["dilution", "-l", "palewater-dyehouse", "-c", "bramble-red,tarn-blue", "--planned", "bramble-red=5,tarn-blue=0.01"]
     tinctor(*few, "--unit", "g/L", "--strict", code=5)
+
+
+def test_flags_of_a_plan() -> None:
+    codes = {flag["code"]: flag["message"] for flag in run("overlap")["flags"]}
+    assert set(codes) == {"saturated", "beyond-linear-range"}
+    assert "bramble-red: 17.19 times" in codes["beyond-linear-range"]  # 0.55 g/L in 1 cm against 0.032 g/L cm
+    assert run("overlap", dilution_factor=50)["flags"] == []
+    few = run("overlap", dilution_factor=50, wavelengths_nm=[420, 520, 600, 700])
+    assert [flag["code"] for flag in few["flags"]] == ["too-few-points"]
+
+
+def test_the_uncertainty_of_a_dilution_is_that_of_its_volumes() -> None:
+    choice = run("dilution", pipettes_ml=[10], flasks_ml=[500], steps=1)["choices"][0]
+    relative = ((0.020 / 10) ** 2 + (0.25 / 500) ** 2) ** 0.5 / 6**0.5  # class A, triangular
+    assert choice["dilution_factor_u"] == pytest.approx(50 * relative, rel=1e-9)
+
+
+def test_a_component_of_which_nothing_is_planned_can_still_be_in_the_way() -> None:
+    a, b = inline("a", [1, 9, 3, 1, 0, 0]), inline("b", [2, 18, 6, 2, 0, 0])
+    request = {
+        "schema": "overlap/1",
+        "background": [],
+        "components": [a, b],
+        "target_relative_u": 0.05,
+        "concentration_unit": "mol/L",
+    }
+    answer = run_document("overlap", {**request, "concentrations": {"a": 0.05, "b": 0.0}})
+    assert answer["summary"] == "No: 'a' would miss 5 %. 'b' could not be told from the others."
+    assert [c["target_met"] for c in answer["components"]] == [False, None]
+    assert answer["condition_number"] is None

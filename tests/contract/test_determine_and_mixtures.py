@@ -157,7 +157,7 @@ def test_components_of_mixtures_come_out_with_their_uncertainties() -> None:
     np.testing.assert_allclose(b["mass_absorptivity"], np.roll(E, 12), atol=0.1)
     assert a["scale_relative_u"] > 0.004
     assert b["scale_relative_u"] is None
-    assert {f["code"] for f in response["flags"]} == {"stock-not-stated", "linearity-not-tested"}
+    assert {f["code"] for f in response["flags"]} == {"stock-not-stated", "linearity-not-tested", "blank-not-given"}
 
 
 def test_a_wrong_composition_is_named() -> None:

@@ -186,3 +186,11 @@ def test_a_scale_nobody_stated_needs_the_operators_word() -> None:
 def test_other_documents_are_no_records(document: Any) -> None:
     with pytest.raises(InputError):
         record_of(document, Word(operator="A. Moor", title="Lot 7"))
+
+
+def test_a_spectrum_without_a_maximum_at_the_published_wavelength_says_so() -> None:
+    w = np.arange(400.0, 501.0, 2.0)
+    there = Component("lot", w, 45.0 * np.exp(-0.5 * ((w - 426.0) / 30.0) ** 2), basis="mass")
+    flank = Component("other", w, 45.0 * np.exp(-0.5 * ((w - 490.0) / 40.0) ** 2), basis="mass")
+    assert compare_with_handbook(there, "tartrazine")[0].at_maximum
+    assert not compare_with_handbook(flank, "tartrazine")[0].at_maximum

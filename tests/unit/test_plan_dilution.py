@@ -28,9 +28,8 @@ def test_factors_of_one_and_two_steps() -> None:
 
 
 def test_nothing_is_pipetted_from_a_flask_that_is_too_small() -> None:
-    for d in dilutions([1.0, 10.0, 50.0], [10.0, 100.0], 2):
-        if len(d.steps) == 2:
-            assert d.steps[1].pipette_ml < d.steps[0].flask_ml
+    (chosen,) = [d for d in dilutions([1.0, 50.0], [10.0, 100.0], 2) if d.factor == 20.0]
+    assert [(s.pipette_ml, s.flask_ml) for s in chosen.steps] == [(50.0, 100.0), (1.0, 10.0)]  # not 50 mL out of a 10 mL flask
 
 
 def test_uncertainty_of_a_dilution_by_hand() -> None:
@@ -133,3 +132,21 @@ def test_each_of_two_serves_what_the_other_does_not() -> None:
 def test_too_much_glassware_is_refused_before_it_is_combined() -> None:
     with pytest.raises(InputError, match="name fewer pipettes and flasks"):
         dilutions(np.arange(1.0, 41.0).tolist(), np.arange(50.0, 90.0).tolist(), 2)
+
+
+def test_the_window_has_a_top() -> None:
+    """Two dyes at one place, each below the window's top and together above it: none of the undiluted choices is in the window."""
+    pair = [
+        Component(n, W, 30 * np.exp(-0.5 * ((W - at) / s) ** 2), basis="mass")
+        for n, at, s in (("a", 550.0, 25.0), ("b", 556.0, 45.0))
+    ]
+    answer = choose_dilution(planned_sample(pair, {"a": 0.025, "b": 0.025}))
+    assert answer.choices
+    assert all(c.highest_absorbance <= 1.0 for c in answer.choices)
+    assert min(c.dilution.factor for c in answer.choices) > 1.0
+
+
+def test_the_cell_s_own_uncertainty_counts() -> None:
+    sample = planned_sample([RED, BLUE], {"red": 0.02, "blue": 0.02})
+    plain, rough = (choose_dilution(sample, DilutionAsked(cell_relative_u=u)).choices[0].relative_u for u in (0.0, 0.03))
+    assert rough == pytest.approx(np.hypot(plain, 0.03), rel=1e-6)

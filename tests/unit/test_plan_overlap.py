@@ -9,6 +9,7 @@ from tinctor import (
     Component,
     Conditions,
     InputError,
+    NoiseModel,
     ResolveSettings,
     clear_windows,
     crossings,
@@ -16,6 +17,7 @@ from tinctor import (
     overlap,
     planned_sample,
 )
+from tinctor.plan.overlap import net_analyte_signal
 
 W = np.arange(400.0, 701.0)
 
@@ -275,3 +277,45 @@ def test_an_uncertain_record_is_not_blamed_on_overlap() -> None:
     assert {v.word for v in answer.verdicts} == {"separable"}
     assert "mostly library-scale" in answer.verdicts[0].reason
     assert np.isfinite(answer.sample.expected.quantification_limit).all()
+
+
+def test_sensitivity_is_per_unit_of_the_original_sample() -> None:
+    """Ten times more concentrated in the bath, half the path, diluted fifty times: a hundred times less absorbance for a unit."""
+    plain = overlap(planned_sample([RED, BLUE], {"red": 0.01, "blue": 0.01}))
+    bath = overlap(planned_sample([RED, BLUE], {"red": 1.0, "blue": 1.0}, path_length_cm=0.5, dilution_factor=50.0))
+    assert bath.sensitivity == pytest.approx(plain.sensitivity / 100.0, rel=1e-12)
+    assert bath.selectivity == pytest.approx(plain.selectivity, rel=1e-12)
+
+
+def test_a_pair_has_the_smaller_of_its_selectivities_with_the_background() -> None:
+    wide = dye("wide", 550.0, width=90.0)
+    (pair,) = overlap(planned_sample([RED, wide])).pairs
+    both = net_analyte_signal(np.column_stack([RED.absorptivity, wide.absorptivity, np.ones(W.size)]))[1][:2]
+    assert both[0] > 1.3 * both[1]
+    assert pair.selectivity == pytest.approx(both.min(), rel=1e-9)
+
+
+def test_a_sum_is_resolved_with_the_planned_proportions() -> None:
+    (group,) = overlap(planned_sample([YELLOW, RED, TWIN], {"yellow": 0.01, "red": 0.03, "twin": 0.01})).groups
+    assert group.response == pytest.approx([1 / 1.01, 1.04 / 1.01], rel=1e-9)  # three of red to one of twin, by hand
+
+
+def test_what_the_resolver_would_flag_is_marginal_however_precise() -> None:
+    close = dye("close", 520.6)
+    noise = NoiseModel(1e-6, 1e-7, 0.0)
+    answer = overlap(planned_sample([RED, close], {"red": 0.02, "close": 0.02}, ResolveSettings(background=(), noise=noise)))
+    selectivity = float(answer.sample.expected.selectivity[0, 0])
+    assert 1 / 100 < selectivity < 1 / 30
+    assert answer.relative_u.max() < 0.02
+    assert [v.word for v in answer.verdicts] == ["marginal", "marginal"]
+    assert "take all but" in answer.verdicts[0].reason
+
+
+def test_too_strong_a_sample_makes_no_group_of_what_is_merely_near() -> None:
+    near = dye("near", 524.0)
+    weak = overlap(planned_sample([RED, near]))
+    assert {v.word for v in weak.verdicts} == {"separable"}
+    narrow = ResolveSettings(wavelength_range_nm=(490.0, 560.0))
+    strong = overlap(planned_sample([RED, near], {"red": 500.0, "near": 500.0}, narrow))
+    assert {v.word for v in strong.verdicts} == {"inseparable"}
+    assert strong.groups == ()

@@ -59,6 +59,8 @@ class HandbookComparison:
         Component less published, in per cent of the published.
     dye_content_percent
         What share of the weighed material would be the pure substance, if nothing else is amiss.
+    at_maximum
+        Whether the spectrum has a maximum of its own near the published wavelength.
     """
 
     value: HandbookValue
@@ -66,6 +68,7 @@ class HandbookComparison:
     specific_absorbance: float
     difference_percent: float
     dye_content_percent: float
+    at_maximum: bool
 
 
 @lru_cache(maxsize=1)
@@ -141,10 +144,13 @@ def _compared(component: Component, value: HandbookValue) -> HandbookComparison:
     if near.size:
         k = int(near[np.argmax(component.absorptivity[near])])
         at, absorptivity = float(w[k]), float(component.absorptivity[k])
+        beside = component.absorptivity[[j for j in (k - 1, k + 1) if 0 <= j < w.size]]
+        at_maximum = bool(beside.size == 2 and (beside <= absorptivity).all())
     else:
+        at_maximum = False
         at = value.wavelength_nm
         absorptivity = float(resample(w, component.absorptivity, np.array([at]))[0])
     if component.basis == "molar":
         absorptivity /= component.molar_mass_g_per_mol or 1.0
     ratio = absorptivity / value.mass_absorptivity
-    return HandbookComparison(value, at, 10.0 * absorptivity, 100.0 * (ratio - 1.0), 100.0 * ratio)
+    return HandbookComparison(value, at, 10.0 * absorptivity, 100.0 * (ratio - 1.0), 100.0 * ratio, at_maximum)

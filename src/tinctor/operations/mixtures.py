@@ -215,6 +215,12 @@ def _flags(request: MixturesRequest, result: MixtureCalibration, names: tuple[st
     if result.alike:
         message = "the spectra found are nearly the same: labels were not looked at, and a fit can hardly tell them apart"
         flags.append(NoteOut(code="collinear", severity="warning", message=message))
+    if not request.blank and request.intercept == "zero":
+        message = (
+            "no blank is given and the lines go through zero: what solvent and cell absorb is counted as the components'; "
+            "give a blank, or fit an intercept"
+        )
+        flags.append(NoteOut(code="blank-not-given", severity="warning", message=message))
     missing = [name for name in names if name not in request.stock_relative_u]
     if missing:
         message = f"stock_relative_u is not stated for {quoted(missing)}: the scale uncertainty is not known without it"

@@ -27,10 +27,12 @@ def summary(answer: Overlap) -> str:
     weak = [n for n, v in verdicts if v.word == "inseparable" and not v.overlapping]
     barely = [n for n, v in verdicts if v.word == "marginal"]
     if target is not None:
-        missed = [n for n, v in zip(names, answer.verdicts, strict=True) if v.target_met is False]
-        said = f"Yes: every component is expected within {100 * target:.3g} %." if not missed else (
-            f"No: {quoted(missed)} would miss {100 * target:.3g} %."
-        )  # fmt: skip
+        missed = [n for n, v in verdicts if v.target_met is False]
+        # of a component of which nothing is planned no target can be missed, and it can still be in the way
+        absent = [n for n, v in verdicts if v.target_met is None and v.word == "inseparable"]
+        said = "No:" if missed or absent else f"Yes: every component is expected within {100 * target:.3g} %."
+        said += f" {quoted(missed)} would miss {100 * target:.3g} %." if missed else ""
+        said += f" {quoted(absent)} could not be told from the others." if absent else ""
     elif alike or weak:
         parts = [f"{quoted(alike)} cannot be told apart as planned"] if alike else []
         parts += [f"{quoted(weak)} cannot be determined as planned, for reasons other than overlap"] if weak else []

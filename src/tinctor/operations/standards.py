@@ -174,6 +174,7 @@ def handbook_out(found: HandbookComparison) -> HandbookOut:
         specific_absorbance=found.specific_absorbance,
         difference_percent=found.difference_percent,
         dye_content_percent=found.dye_content_percent,
+        at_maximum=found.at_maximum,
     )
 
 

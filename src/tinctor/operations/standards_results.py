@@ -152,6 +152,7 @@ class HandbookOut(ResponseModel):
     specific_absorbance: float
     difference_percent: float
     dye_content_percent: float = Field(description="share of pure substance that would explain it, if nothing else is amiss")
+    at_maximum: bool = Field(description="whether the spectrum has a maximum of its own near the published wavelength")
 
 
 def listed(values: FloatArray) -> list[float | None]:

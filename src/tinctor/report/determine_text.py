@@ -20,7 +20,11 @@ def determine_table(response: DetermineResponse) -> str:
     lines = text_table(heading, [_row(r) for r in response.results], right=[False, True, True, False], colour=False)
     line = response.line
     dof = "declared scatter" if line.degrees_of_freedom is None else f"{line.degrees_of_freedom:g} degrees of freedom"
-    lines += ["", f"line by {line.signal}: {line.points} points, {dof}; limits in {unit} (1 cm, undiluted):"]
+    lines += [
+        "",
+        f"line by {line.signal}: {line.points} points, {dof}"
+        + (f"; limits in {unit} (1 cm, undiluted):" if response.limits else ""),
+    ]
     for limit in response.limits:
         shown = [
             f"{name} {significant(value, 2)}"

@@ -213,6 +213,8 @@ def _handbook_lines(response: StandardsResponse) -> list[str]:
             f"{h.published_wavelength_nm:g} nm ({h.source}{memory}); here {h.specific_absorbance:.4g} at {h.maximum_nm:g} nm, "
             f"{h.difference_percent:+.1f} %: as weighed, a dye content of {h.dye_content_percent:.1f} % would explain it"
         )
+        if not h.at_maximum:
+            text += ". This spectrum has no maximum there: it may be another substance, solvent or pH"
         lines += ["", *textwrap.wrap(text, WIDTH, subsequent_indent="  ", break_long_words=False, break_on_hyphens=False)]
     return lines
 
