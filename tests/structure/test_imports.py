@@ -34,7 +34,7 @@ DOMAIN = {"spectrum", "component", "noise", "arrays", "axis", "errors", "units",
 THIRD_PARTY = {
     "version": set(), "errors": set(), "units": set(), "arrays": {"numpy"}, "axis": {"numpy"}, "noise": {"numpy"},
     "spectrum": {"numpy"}, "component": {"numpy"}, "files": {"numpy"}, "library": {"numpy", "pydantic"},
-    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "plan": {"numpy"},
+    "resolve": {"numpy", "threadpoolctl"}, "standards": {"numpy", "scipy"}, "plan": {"numpy"}, "pls": {"numpy", "scipy", "sklearn"},
     "operations": {"numpy", "pydantic", "scipy"},
     "report": {"matplotlib"},
     "cli": {"typer", "click"}, "__main__": set(), "__init__": set(),
@@ -44,7 +44,8 @@ THIRD_PARTY = {
 ONE_HOME = {
     "threadpoolctl": {"resolve/threads.py"},
     "matplotlib": {"report/charts.py"},
-    "scipy": {"standards/distributions.py", "operations/provenance.py"},
+    "scipy": {"standards/distributions.py", "operations/provenance.py", "pls/limits.py"},
+    "sklearn": {"pls/train.py"},
 }
 
 

@@ -92,15 +92,17 @@ def fit_model(
 def _limits(Z: FloatArray, Y: FloatArray, latent: Latent, n: int, preparations: int, coverage: float) -> Limits:
     h = latent.components
     residual = (Z - latent.mean_x) - latent.scores @ latent.loadings.T
-    sizes = np.linalg.svd(residual, compute_uv=False) ** 2 / max(n - 1, 1)
+    # mean and components were fitted to these residuals: those of new spectra are larger
+    sizes = np.linalg.svd(residual, compute_uv=False) ** 2 / max(n - 1 - h, 1) * (1 + 1 / n)
+    each = 1 - (1 - coverage) / 2  # two limits for one spectrum: together they hold at the coverage (Bonferroni)
     t2 = (latent.scores**2 / latent.scores.var(axis=0, ddof=1)).sum(axis=1)
     return Limits(
         samples=n,
         preparations=preparations,
         coverage=coverage,
         t2=t2_limit_training(coverage, n, h) if n > h else np.inf,
-        t2_new=t2_limit_new(coverage, n, h) if n > h else np.inf,
-        q=q_limit(coverage, sizes[sizes > ROUNDING * max(float(sizes.sum()), 1e-300)]),
+        t2_new=t2_limit_new(each, n, h) if n > h else np.inf,
+        q=q_limit(each, sizes[sizes > ROUNDING * max(float(sizes.sum()), 1e-300)]),
         leverage=float((1.0 / n + t2 / (n - 1)).max()),
         reference=np.column_stack([Y.min(axis=0), Y.max(axis=0)]),
     )

@@ -5,7 +5,6 @@ from __future__ import annotations
 from math import sqrt
 from typing import Final
 
-import numpy as np
 from scipy import special
 
 from tinctor.arrays import FloatArray
@@ -44,7 +43,7 @@ def t2_limit_training(probability: float, samples: int, components: int) -> floa
     Examples
     --------
     >>> round(t2_limit_training(0.95, 24, 2), 6)
-    7.199745
+    7.199746
     """
     n, a = samples, components
     return a * (n - 1) / (n - a) * f_quantile(probability, a, n - a)
@@ -63,7 +62,9 @@ def t2_limit_new(probability: float, samples: int, components: int) -> float:
 
 
 def q_limit(probability: float, residual_eigenvalues: FloatArray) -> float:
-    """Return the limit of the squared residual of a spectrum (Jackson and Mudholkar, Technometrics 21 (1979) 341); 0 without residual.
+    """Return the limit of the squared residual of a spectrum, 0 without residual.
+
+    Jackson and Mudholkar, Technometrics 21 (1979) 341.
 
     Parameters
     ----------
@@ -72,6 +73,7 @@ def q_limit(probability: float, residual_eigenvalues: FloatArray) -> float:
 
     Examples
     --------
+    >>> import numpy as np
     >>> round(q_limit(0.95, np.array([0.5, 0.3, 0.2, 0.1])), 6)
     2.871787
     """

@@ -2,9 +2,10 @@
 
 Prediction needs neither scikit-learn nor scipy. A model is one analyte, or several that were trained jointly.
 
-Uncertainty of a predicted value (Faber and Bro, Chemom. Intell. Lab. Syst. 61 (2002) 133; IUPAC report of Olivieri et al., Pure Appl.
-Chem. 78 (2006) 633): u^2 = (1 + h) MSE - u_ref^2, with h the leverage of the spectrum, MSE the mean squared error of the training set
-over its degrees of freedom, and u_ref the standard uncertainty of the references; never below the share that spectral noise alone makes.
+Uncertainty of a predicted value (Faber and Bro, Chemom. Intell. Lab. Syst. 61 (2002) 133; IUPAC report of Olivieri et al., Pure
+Appl. Chem. 78 (2006) 633): u^2 = (1 + h) MSE - u_ref^2, with h the leverage of the spectrum, MSE the mean squared error of the
+training set over its degrees of freedom, and u_ref the standard uncertainty of the references; never below h MSE, the share that
+the model itself makes.
 """
 
 from __future__ import annotations
@@ -34,7 +35,8 @@ class Limits:
     coverage
         Probability of the interval, and of T2 and Q of a sound spectrum to lie below their limits.
     t2, t2_new, q
-        Limits of Hotelling's T2 for training spectra and for new ones, and of the squared residual.
+        Limits of Hotelling's T2 for training spectra and for new ones, and of the squared residual of new ones. The last two hold
+        together at the coverage, each at half the error.
     leverage
         Largest leverage of the training spectra.
     reference : array (q, 2)
@@ -139,8 +141,8 @@ class Model:
         q, h = len(self.names), self.components
         m = self.steps[-1].wavelength_nm.size if self.steps else self.wavelength_nm.size
         shapes = {
-            "intercept": (q,), "coefficients": (m, q), "mean_x": (m,), "rotations": (m, h), "loadings": (m, h), "score_variance": (h,),
-            "mse": (q,), "reference_u": (q,),
+            "intercept": (q,), "coefficients": (m, q), "mean_x": (m,), "rotations": (m, h), "loadings": (m, h),
+            "score_variance": (h,), "mse": (q,), "reference_u": (q,),
         }  # fmt: skip
         for name, expected in shapes.items():
             found = getattr(self, name).shape

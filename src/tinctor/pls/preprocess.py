@@ -2,12 +2,12 @@
 
     range           readings from low to high nm only
     offset          less the mean absorbance from low to high nm, spectrum by spectrum
-    snv             standard normal variate: each spectrum less its mean, over its standard deviation (Barnes, Dhanoa and Lister 1989)
-    savitzky-golay  local polynomial smoothing or its derivative (Savitzky and Golay 1964); the half windows at both ends are dropped
+    snv             standard normal variate: each spectrum less its mean, over its standard deviation (Barnes and others 1989)
+    savitzky-golay  local polynomial smoothing or its derivative (Savitzky and Golay 1964); both half windows are dropped
     mean-centre     less the mean training spectrum
-    autoscale       over the standard deviation of the training spectra at each wavelength: empty regions then count like bands
+    autoscale       over the standard deviation at each wavelength: empty regions then count like bands
 
-A derivative is with respect to wavelength, per nm, on an ascending even axis: an uneven one is refused and not resampled in silence.
+A derivative is with respect to wavelength, per nm, on an ascending even axis: an uneven one is refused, not resampled in silence.
 """
 
 from __future__ import annotations
@@ -141,7 +141,7 @@ def apply_steps(X: FloatArray, fitted: Sequence[FittedStep]) -> FloatArray:
 
 
 def savitzky_golay_weights(window: int, polynomial: int, derivative: int, step_nm: float) -> FloatArray:
-    """Return the weights (window,) of the readings from left to right: the least-squares polynomial's value or derivative in the middle.
+    """Return the weights (window,) of the readings from left to right for the polynomial's value or derivative in the middle.
 
     Examples
     --------

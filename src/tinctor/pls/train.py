@@ -1,8 +1,8 @@
 """PLS regression by scikit-learn, for every number of components at once; the only module that imports it.
 
-What is known of the library is kept out of the way: `scale=False` (its default divides every wavelength by its spread), references in
-two dimensions and in units of order one, means taken here, coefficients made from rotations and loadings and not from attributes whose
-meaning has changed between versions. A model of fewer components is part of a larger one.
+What is known of the library is kept out of the way: `scale=False` (its default divides every wavelength by its spread),
+references in two dimensions and in units of order one, means taken here, coefficients made from rotations and loadings and not
+from attributes whose meaning has changed between versions. A model of fewer components is part of a larger one.
 """
 
 from __future__ import annotations
@@ -90,7 +90,8 @@ def train(X: FloatArray, Y: FloatArray, components: int) -> Latent:
     array([2., 3.])
     """
     _check(X, Y, components)
-    from sklearn.cross_decomposition import PLSRegression  # a second of loading: only where a model is trained
+    # a second of loading: only where a model is trained
+    from sklearn.cross_decomposition import PLSRegression
 
     mean_x, mean_y = X.mean(axis=0), Y.mean(axis=0)
     centred_x, centred_y = X - mean_x, Y - mean_y
