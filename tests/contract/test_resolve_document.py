@@ -250,7 +250,9 @@ def test_error_bodies_have_their_fixed_keys_and_at_most_fifty_faults() -> None:
 
 
 def test_unknown_operations_are_refused() -> None:
-    with pytest.raises(InputError, match="one of determine dilution mixtures overlap resolve standards transfer wavelengths"):
+    with pytest.raises(
+        InputError, match="one of calibrate determine dilution mixtures overlap predict resolve standards transfer wavelengths"
+    ):
         operation("conjure")
 
 

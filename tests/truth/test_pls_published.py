@@ -14,6 +14,7 @@ import numpy as np
 import pytest
 from reference_data import example, table
 
+from tinctor import run_document
 from tinctor.pls.calibrate import fit_model
 from tinctor.pls.limits import f_quantile, q_limit, t2_limit_new, t2_limit_training
 from tinctor.pls.preprocess import Step
@@ -132,3 +133,39 @@ def test_three_absorbers_of_a_herbal_extract(reference: Path) -> None:
     assert [round(value, digits) for value, digits in zip(rmsep, (1, 2, 2), strict=True)] == [1.4, 0.11, 0.17]
     swapped = fit_model(A[~test], w, Y[~test][:, ::-1].copy(), ["a", "b", "c"], "mg/L", steps, 4)
     assert np.sqrt(((swapped.predict(A[test]).value - Y[test]) ** 2).mean(axis=0))[0] > 3, "negative control: columns exchanged"
+
+
+def test_the_operation_gives_the_printed_table(gasoline: Gasoline) -> None:
+    def samples(rows: range) -> dict[str, list[dict[str, object]]]:
+        w = gasoline.wavelength_nm.tolist()
+        return {
+            "spectra": [{"id": str(k), "wavelength_nm": w, "absorbance": gasoline.X[k].tolist()} for k in rows],
+            "references": [{"id": str(k), "values": {"octane": float(gasoline.y[k, 0])}} for k in rows],
+        }
+
+    twice = [k for k in range(50) if (gasoline.y[:50, 0] == gasoline.y[k, 0]).sum() > 1]
+    answer = run_document(
+        "calibrate",
+        {
+            "schema": "calibrate/1",
+            "unit": "octane number",
+            "max_components": 10,
+            "selection": "f-test",
+            **samples(range(50)),
+            "groups": {str(k): f"sample {k}" for k in twice},  # the same octane number, and different samples
+            "test": samples(range(50, 60)),
+        },
+    )
+    analyte = answer["analytes"][0]
+    assert analyte["chosen_components"] == 3
+    printed = [float(text) for text in gasoline.published("published_vignette.csv", "rmsep_test")]
+    assert [round(row["rmsep"], 4) for row in analyte["table"][1:]] == printed[1:]
+    printed = [float(text) for text in gasoline.published("published_vignette.csv", "loo_cv")]
+    assert [float(f"{row['rmsecv']:.4g}") for row in analyte["table"]] == printed
+    predict = {"schema": "predict/1", "model": answer["model"], "spectra": samples(range(50, 60))["spectra"]}
+    values = [result["analytes"][0] for result in run_document("predict", predict)["results"]]
+    expected = gasoline.numbers("r_test_predictions.csv")[:, 3]
+    shown = [(v["value"], e) for v, e in zip(values, expected, strict=True) if v["value"] is not None]
+    assert shown
+    assert all(value == pytest.approx(e, abs=1e-8) for value, e in shown)
+    assert all(result["status"] != "accepted" for result in values)  # their residuals are beyond what the training set left

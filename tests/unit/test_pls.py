@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import subprocess
 import sys
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -284,3 +285,12 @@ def test_prediction_loads_neither_scikit_learn_nor_scipy(tmp_path: Any) -> None:
         check=True,
     )
     assert float(done.stdout) == model.predict(X).value[0, 0]
+
+
+def test_a_model_made_earlier_predicts_the_same_for_ever() -> None:
+    """The file was made once with version 1 of the format and is never made anew."""
+    golden = json.loads((Path(__file__).resolve().parents[1] / "data" / "pls-model-1.json").read_text(encoding="utf-8"))
+    (model,) = models_of(golden["model"])
+    found = model.predict(np.array(golden["spectra"]))
+    for name in ("value", "u", "t2", "q_residual"):
+        assert getattr(found, name) == pytest.approx(np.array(golden[name]), rel=1e-12), name

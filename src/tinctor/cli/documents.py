@@ -16,7 +16,7 @@ __all__ = ["run_json", "show_schema"]
 OperationName = Annotated[
     str,
     typer.Argument(
-        help="Name of the operation: resolve, overlap, wavelengths, dilution, standards, determine, mixtures, transfer."
+        help="Name of the operation: resolve, overlap, wavelengths, dilution, standards, determine, calibrate, predict, ..."
     ),
 ]
 

@@ -18,10 +18,12 @@ __all__ = ["OPERATIONS", "Operation", "dumped", "operation", "run_checked", "run
 
 #: Operations by name, with the module that holds each: loaded when it is used.
 OPERATIONS: Final[dict[str, str]] = {
+    "calibrate": "tinctor.operations.calibrate",
     "determine": "tinctor.operations.determine",
     "dilution": "tinctor.operations.dilution",
     "mixtures": "tinctor.operations.mixtures",
     "overlap": "tinctor.operations.overlap",
+    "predict": "tinctor.operations.predict",
     "resolve": "tinctor.operations.resolve",
     "standards": "tinctor.operations.standards",
     "transfer": "tinctor.operations.transfer",
