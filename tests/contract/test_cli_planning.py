@@ -229,7 +229,7 @@ def test_matplotlib_is_loaded_for_a_chart_only(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("arguments", "code", "words"),
     [
-        (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue"], 3, "expected at least two, found 1"),
+        (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue"], 3, "expected at least two components, found 1"),
         (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue,tarn-blue"], 3, "found twice: 'tarn-blue'"),
         (["overlap", "-l", "palewater-dyehouse", "-c", "tarn-blue,tarm-blue"], 3, "did you mean 'tarn-blue'"),
         (

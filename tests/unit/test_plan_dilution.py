@@ -150,3 +150,22 @@ def test_the_cell_s_own_uncertainty_counts() -> None:
     sample = planned_sample([RED, BLUE], {"red": 0.02, "blue": 0.02})
     plain, rough = (choose_dilution(sample, DilutionAsked(cell_relative_u=u)).choices[0].relative_u for u in (0.0, 0.03))
     assert rough == pytest.approx(np.hypot(plain, 0.03), rel=1e-6)
+
+
+def test_glassware_is_not_blamed_for_a_target() -> None:
+    sample = planned_sample([RED, BLUE], {"red": 2.0, "blue": 1.5}, ResolveSettings(target_relative_u=0.001))
+    with pytest.raises(InputError, match=r"misses the target of 0\.1 %") as caught:
+        choose_dilution(sample)
+    assert caught.value.faults[0].path == ".target_relative_u"
+    assert "library record" in caught.value.faults[0].hint
+
+
+def test_a_rough_record_is_diluted_like_any_other() -> None:
+    """A scale of 10 % is mended by no dilution, and is no reason to refuse one."""
+    rough = [Component(c.name, W, c.absorptivity, basis="mass", scale_relative_u=0.1) for c in (RED, BLUE)]
+    assert choose_dilution(planned_sample(rough, {"red": 2.0, "blue": 1.5})).choices
+
+
+def test_a_slip_of_the_unit_is_named() -> None:
+    with pytest.raises(InputError, match="no solution absorbs like that"):
+        planned_sample([RED, BLUE], {"red": 1e300, "blue": 0.1})

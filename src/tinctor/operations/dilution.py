@@ -152,7 +152,11 @@ def _on_fibre(request: DilutionRequest) -> dict[str, float] | None:
     if percent is None or ratio is None:
         missing = "on_fibre_percent" if percent is None else "liquor_ratio_l_per_kg"
         faults.append(
-            Fault("missing-key", f"$.{missing}", "per cent on weight of fibre and liquor ratio belong together, found one alone")
+            Fault(
+                "missing-key",
+                f"$.{missing}",
+                "per cent on fibre and liquor ratio (L/kg, such as 10) belong together, found one alone",
+            )
         )
     if percent is not None and request.concentrations is not None:
         faults.append(Fault("given-twice", "$.on_fibre_percent", "give concentrations or on_fibre_percent, not both"))

@@ -39,6 +39,10 @@ WORDS: Final[dict[str, tuple[str, str, str]]] = {
         "expected at most {max_length} elements, found {actual_length}",
         "send the spectra in several requests",
     ),
+    "greater_than_equal": ("out-of-range", "expected at least {ge}, found {found}", ""),
+    "greater_than": ("out-of-range", "expected above {gt}, found {found}", ""),
+    "less_than_equal": ("out-of-range", "expected at most {le}, found {found}", ""),
+    "less_than": ("out-of-range", "expected below {lt}, found {found}", ""),
     "literal_error": ("unknown-word", "expected {expected}, found {found}", ""),
 }
 

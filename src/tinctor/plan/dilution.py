@@ -310,11 +310,28 @@ def _well_placed(choice: DilutionChoice, high: float) -> bool:
     return high / 2 <= choice.highest_absorbance <= 0.9 * high
 
 
+def _misses(sample: PlannedSample, nearest: DilutionChoice, missed: list[str]) -> InputError:
+    """The error where dilutions fit the window, and components are not determined well enough in any."""
+    target = sample.settings.target_relative_u
+    places = [k for k, name in enumerate(sample.names) if name in missed]
+    expected = ", ".join(f"{sample.names[k]} {100 * nearest.relative_u[k]:.2g} %" for k in places)
+    wanted = "the quantification limit" if target is None else f"the target of {100 * target:.2g} % or the quantification limit"
+    return InputError.single(
+        "no-dilution-serves",
+        ".concentrations" if target is None else ".target_relative_u",
+        f"{nearest.dilution.factor:.4g} times in {nearest.path_length_cm:g} cm fits the window, but {quoted(missed)} misses "
+        f"{wanted} or its linear range there (expected {expected}), and no other dilution, nor two together, serves all",
+        "`tinctor overlap` names the largest part of each uncertainty: no dilution mends the scale of a library record",
+    )
+
+
 def _out_of_reach(sample: PlannedSample, asked: DilutionAsked, nearest: DilutionChoice) -> InputError:
     """The error for glassware and cells that do not serve, with what would."""
     served = [n for n, ok in zip(sample.names, nearest.serves, strict=True) if ok]
     missed = [n for n, ok in zip(sample.names, nearest.serves, strict=True) if not ok]
     low, high = asked.absorbance_window
+    if nearest.in_window:
+        return _misses(sample, nearest, missed)
     factor = nearest.dilution.factor * nearest.highest_absorbance / nearest.path_length_cm
     found = f"the nearest, {nearest.dilution.factor:.4g} times in {nearest.path_length_cm:g} cm, "
     found += f"reaches absorbance {nearest.highest_absorbance:.3g}"

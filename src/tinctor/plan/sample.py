@@ -22,6 +22,8 @@ __all__ = ["ASSUMED_ABSORBANCE", "PlannedSample", "planned_axis", "planned_sampl
 
 #: Where no concentration is planned, all together reach this absorbance at their highest: the middle of what is measured well.
 ASSUMED_ABSORBANCE: Final = 0.8
+#: A planned absorbance above this is a slip of the unit: a saturated solution of a strong dye stays below it.
+HIGHEST_ABSORBANCE: Final = 1e6
 #: More readings than any instrument writes.
 MOST_READINGS: Final = 20_000
 
@@ -195,6 +197,13 @@ def _check_readings(sample: PlannedSample) -> None:
             "read at more wavelengths, leave a component out, or take a blank and fit no background",
         )
     highest, noise = float(sample.absorbance.max()), float(sample.settings.noise.reading_u(0.0))
+    if not highest <= HIGHEST_ABSORBANCE:
+        raise InputError.single(
+            "too-strong",
+            ".concentrations",
+            f"the planned absorbance is {highest:.2g} at its highest: no solution absorbs like that",
+            "check the concentrations and their unit",
+        )
     if highest < noise:
         raise InputError.single(
             "below-noise",
@@ -272,7 +281,7 @@ def _check_components(components: Sequence[Component]) -> None:
         raise InputError.single(
             "one-component",
             ".components",
-            f"overlap is between components: expected at least two, found {len(names)}",
+            f"expected at least two components, found {len(names)}: there is nothing to tell apart",
             "name every absorber that may be in the sample; for a single one `tinctor determine` reads a calibration line",
         )
     twice = sorted({name for name in names if names.count(name) > 1})

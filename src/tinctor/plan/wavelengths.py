@@ -29,6 +29,8 @@ __all__ = ["Choice", "ChosenWavelengths", "WavelengthsAsked", "choose_wavelength
 TABLE_EXTRA: Final = 6
 #: Nodes for each line of the table but the one asked for.
 TABLE_NODES: Final = 20
+#: A larger error of the wavelength axis is a defect and no uncertainty.
+LARGEST_ERROR_NM: Final = 20.0
 #: More candidates than this are refused: no monochromator has so fine an axis.
 MOST_CANDIDATES: Final = 4000
 
@@ -70,6 +72,9 @@ class WavelengthsAsked:
                 faults.append(
                     Fault(name.replace("_", "-"), f".{name}", f"{name} must be a finite number of at least 0, found {value!r}")
                 )
+        if self.wavelength_error_nm > LARGEST_ERROR_NM:
+            words = f"wavelength_error_nm must be at most {LARGEST_ERROR_NM:g} nm, found {self.wavelength_error_nm:g}"
+            faults.append(Fault("wavelength-error-nm", ".wavelength_error_nm", words, "such an instrument is to be mended first"))
         window = self.absorbance_window
         if window is not None and not (np.isfinite(window).all() and window[0] < window[1]):
             faults.append(Fault("absorbance-window", ".absorbance_window", f"expected [low, high], found {list(window)}"))
@@ -185,12 +190,21 @@ def _pool(sample: PlannedSample, asked: WavelengthsAsked) -> PlannedSample:
     low, high = asked.absorbance_window or (-np.inf, sample.settings.absorbance_limit)
     A = pool.absorbance
     usable = (low <= A) & (min(high, sample.settings.absorbance_limit) >= A)
-    if usable.sum() < pool.design.asked:
+    needed = pool.design.asked
+    if A.size < needed:
+        raise InputError.single(
+            "no-candidates",
+            ".candidates_nm" if asked.candidates_nm is not None else ".wavelength_range_nm",
+            f"{needed} wavelengths are needed for {len(pool.components)} components and the background, found {A.size} candidates",
+            "name more candidates, leave a component out, or take a blank and fit no background",
+        )
+    if usable.sum() < needed:
+        window = f"at or below {high:g}" if asked.absorbance_window is None else f"from {low:g} to {high:g}"
         raise InputError.single(
             "no-candidates",
             ".absorbance_window" if asked.absorbance_window else ".absorbance_limit",
-            f"only {usable.sum()} of {A.size} candidates have a planned absorbance from {max(low, A.min()):.3g} to {high:.3g}; "
-            f"{pool.design.asked} are needed (planned: {A.min():.3g} to {A.max():.3g})",
+            f"only {usable.sum()} of {A.size} candidates have a planned absorbance {window}, and {needed} are needed "
+            f"(planned: {A.min():.3g} to {A.max():.3g})",
             "change the dilution, the cell or the window; `tinctor dilution` finds a dilution that fits",
         )
     _check_seen(pool, usable)

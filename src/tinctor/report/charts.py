@@ -27,6 +27,8 @@ __all__ = ["dilution_figure", "overlap_figure", "save", "wavelengths_figure"]
 #: Okabe and Ito's palette without yellow, which is too light on paper.
 COLOURS: Final = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#000000", "#56B4E9", "#E69F00")
 DASHES: Final = ("-", (0, (6, 2)), (0, (1.5, 1.5)), (0, (6, 2, 1.5, 2)), (0, (10, 3)), (0, (3, 1, 1, 1, 1, 1)), (0, (1, 3)))
+#: More circles than this hide the curves.
+MOST_CIRCLES: Final = 25
 #: Inches: fits between the margins of A4 and of Letter.
 WIDE: Final = (7.2, 7.0)
 STYLE: Final[Any] = {
@@ -58,11 +60,12 @@ def overlap_figure(response: OverlapResponse) -> Figure:
         _spectra(top, response.spectra, "absorptivity")
         _windows(top, response.clear_windows)
         crossings = [(c.wavelength_nm, c.absorptivity) for c in response.crossings]
-        if crossings:
+        if 0 < len(crossings) <= MOST_CIRCLES:
             top.plot(
                 *zip(*crossings, strict=True), linestyle="none", marker="o", markerfacecolor="white", color="black", markersize=5
             )
-        _title(top, "Absorptivity; circles: equal absorptivities; grey: clear windows")
+        circles = "; circles: equal absorptivities" if len(crossings) <= MOST_CIRCLES else ""
+        _title(top, f"Absorptivity{circles}; grey: clear windows")
         _similarity(below, [c.name for c in response.components], response.similarity)
     return figure
 
@@ -117,7 +120,7 @@ def dilution_figure(response: DilutionResponse) -> Figure:
         below.set_xticks(range(1, len(choices) + 1), labels, fontsize=8)
         _from_zero(below)
         below.legend(frameon=False)
-        _title(below, "Expected uncertainty of each choice, best first (no mark: does not serve)")
+        _title(below, "Expected uncertainty of each choice, in the order recommended (no mark: does not serve)")
     return figure
 
 
@@ -149,8 +152,11 @@ def _spectra(axes: Axes, spectra: SpectraOut, quantity: str) -> None:
         marker = "." if len(values) < 30 else ""
         axes.plot(spectra.wavelength_nm, values, linestyle=DASHES[k % len(DASHES)], color=colour, marker=marker)
         top = max(range(len(values)), key=values.__getitem__)
+        span = spectra.wavelength_nm[-1] - spectra.wavelength_nm[0]
+        along = (spectra.wavelength_nm[top] - spectra.wavelength_nm[0]) / span if span > 0 else 0.5
+        side = "left" if along < 0.1 else "right" if along > 0.9 else "center"  # a label stays inside the axes
         axes.annotate(
-            _plain(name), (spectra.wavelength_nm[top], values[top]), textcoords="offset points", xytext=(0, 3), ha="center",
+            _plain(name), (spectra.wavelength_nm[top], values[top]), textcoords="offset points", xytext=(0, 3), ha=side,
             fontsize=8, bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.5, "alpha": 0.8},
         )  # fmt: skip
     axes.set_xlabel("wavelength / nm")
@@ -161,7 +167,7 @@ def _spectra(axes: Axes, spectra: SpectraOut, quantity: str) -> None:
 def _windows(axes: Axes, windows: Sequence[WindowOut]) -> None:
     for w in windows:
         axes.axvspan(w.low_nm, w.high_nm, color="0.88", linewidth=0, zorder=0)
-        label = "none" if w.component is None else w.component
+        label = "baseline" if w.component is None else w.component
         if w.high_nm > w.low_nm:
             middle = (w.low_nm + w.high_nm) / 2
             axes.text(
