@@ -41,7 +41,7 @@ from tinctor.cli.plan_options import (
     plan_document,
     values_by_name,
 )
-from tinctor.cli.reading import say
+from tinctor.cli.reading import cautions, say
 
 __all__ = ["DILUTION_EPILOG", "OVERLAP_EPILOG", "WAVELENGTHS_EPILOG", "dilution", "overlap", "wavelengths"]
 
@@ -247,10 +247,10 @@ def _answer(
 
         put_chart(operation, response, plot)
     if form is not Format.JSON:
-        say(_cautions(response))
+        say(cautions(response))
     put(_rendered(operation, response, form), output)
     if form is Format.JSON:
-        say(_cautions(response))
+        say(cautions(response))
     if strict and _needs_a_look(response):
         raise typer.Exit(Exit.DONE_WITH_FLAGS)
 
@@ -286,8 +286,3 @@ def _needs_a_look(response: Any) -> bool:
     return any(
         getattr(c, "verdict", "separable") != "separable" or c.target_met is False for c in getattr(response, "components", [])
     )
-
-
-def _cautions(response: Any) -> list[str]:
-    """What the records warn of, each once, where the result is read."""
-    return [f"caution, {record.name}: {record.caution}" for record in response.provenance.records if record.caution]

@@ -8,7 +8,7 @@ from typing import Annotated, Any
 import typer
 
 from tinctor.cli.output import Format
-from tinctor.cli.reading import given
+from tinctor.cli.reading import background_terms, given
 
 __all__ = [
     "AbsorbanceLimit",
@@ -122,7 +122,7 @@ def plan_document(
         components=[name.strip() for item in component for name in item.split(",") if name.strip()],
         concentration_unit=unit,
         concentrations=values_by_name(planned, "--planned"),
-        background=_background(background),
+        background=background_terms(background),
         wavelengths_nm=numbers(wavelengths_nm, "--wavelengths-nm"),
         **settings,
     )
@@ -173,12 +173,3 @@ def _number(text: str, option: str) -> float:
         return float(text)
     except ValueError as error:
         raise typer.BadParameter(f"expected a number, found {text.strip()!r}", param_hint=option) from error
-
-
-def _background(terms: list[str] | None) -> list[str] | None:
-    if terms is None:
-        return None
-    listed = [term.strip() for item in terms for term in item.split(",")]
-    if "none" in listed and len(listed) > 1:
-        raise typer.BadParameter(f"none stands alone, found {', '.join(listed)}", param_hint="--background")
-    return [] if listed == ["none"] else listed

@@ -13,7 +13,7 @@ if TYPE_CHECKING:
     from tinctor.files import ReadOptions
     from tinctor.spectrum import Spectrum
 
-__all__ = ["document_of", "given", "read_all", "say", "with_blank", "with_cells"]
+__all__ = ["background_terms", "cautions", "document_of", "given", "read_all", "say", "with_blank", "with_cells"]
 
 
 def read_all(files: list[str], options: ReadOptions) -> tuple[list[Spectrum], list[str]]:
@@ -114,3 +114,18 @@ def say(lines: Iterable[str]) -> None:
     """Print lines on standard error."""
     for line in lines:
         typer.echo(line, err=True)
+
+
+def background_terms(terms: list[str] | None) -> list[str] | None:
+    """Return the background terms of an option that repeats or holds commas; none stands alone."""
+    if terms is None:
+        return None
+    listed = [term.strip() for item in terms for term in item.split(",")]
+    if "none" in listed and len(listed) > 1:
+        raise typer.BadParameter(f"none stands alone, found {', '.join(listed)}", param_hint="--background")
+    return [] if listed == ["none"] else listed
+
+
+def cautions(response: Any) -> list[str]:
+    """Return what the records warn of, each once, where the result is read."""
+    return [f"caution, {record.name}: {record.caution}" for record in response.provenance.records if record.caution]

@@ -11,7 +11,7 @@ import typer
 
 from tinctor.cli.faults import Exit, guarded
 from tinctor.cli.output import Format, put
-from tinctor.cli.reading import document_of, given, read_all, say, with_blank, with_cells
+from tinctor.cli.reading import background_terms, cautions, document_of, given, read_all, say, with_blank, with_cells
 
 if TYPE_CHECKING:
     from tinctor.operations.resolve import ResolveResponse
@@ -110,7 +110,7 @@ def resolve(
             "library": library,
             "components": [name.strip() for item in component for name in item.split(",") if name.strip()],
             "concentration_unit": unit,
-            "background": _background(background),
+            "background": background_terms(background),
             "wavelength_range_nm": list(range_nm) if range_nm else None,
             "wavelengths_nm": _wavelengths(wavelengths_nm),
             "absorbance_limit": absorbance_limit,
@@ -127,9 +127,9 @@ def resolve(
         response = _run(document)
         if output_format is Format.JSON:
             put(_rendered(response, output_format, output), output)
-            say([*notes, *_cautions(response)])
+            say([*notes, *cautions(response)])
         else:
-            say(_cautions(response))
+            say(cautions(response))
             put(_rendered(response, output_format, output), output)
         if strict and any(result.status != "accepted" for result in response.results):
             raise typer.Exit(Exit.DONE_WITH_FLAGS)
@@ -165,15 +165,6 @@ def _rendered(response: ResolveResponse, output_format: Format, output: Path | N
     return resolve_table(response, width=get_terminal_size().columns if terminal else None, colour=terminal)
 
 
-def _background(terms: list[str] | None) -> list[str] | None:
-    if terms is None:
-        return None
-    listed = [term.strip() for item in terms for term in item.split(",")]
-    if "none" in listed and len(listed) > 1:
-        raise typer.BadParameter(f"none stands alone, found {', '.join(listed)}", param_hint="--background")
-    return [] if listed == ["none"] else listed
-
-
 def _wavelengths(text: str | None) -> list[float] | None:
     if text is None:
         return None
@@ -181,8 +172,3 @@ def _wavelengths(text: str | None) -> list[float] | None:
         return [float(part) for part in text.split(",")]
     except ValueError as error:
         raise typer.BadParameter(f"expected numbers separated by commas, found {text!r}", param_hint="--wavelengths-nm") from error
-
-
-def _cautions(response: ResolveResponse) -> list[str]:
-    """What the records warn of, each once, where the result is read."""
-    return [f"caution, {record.name}: {record.caution}" for record in response.provenance.records if record.caution]
