@@ -202,7 +202,7 @@ def overlap() -> dict[str, object]:
 
 
 def _greedy(problem, k: int):
-    """Add the candidate that improves most, k times; what a plain script would do."""
+    """Add the candidate that improves most, k times; by the determinant of the information until that determines every unknown."""
     import numpy as np
 
     from tinctor.plan.selection import objectives
@@ -211,24 +211,34 @@ def _greedy(problem, k: int):
     for _ in range(k):
         rest = np.array([i for i in range(problem.n) if i not in chosen])
         sets = np.column_stack([np.tile(np.array(chosen, dtype=int), (rest.size, 1)), rest])
-        chosen.append(int(rest[np.argmin(objectives(problem, sets))]))
+        rows = problem.Z[sets]
+        if sets.shape[1] < problem.unknowns:
+            information = np.swapaxes(rows, 1, 2) @ rows + 1e-9 * np.eye(problem.unknowns)
+            values = -np.linalg.slogdet(information)[1]
+        else:
+            values = objectives(problem, sets)
+        chosen.append(int(rest[np.argmin(values)]))
     return objectives(problem, np.array([chosen]))[0]
 
 
-def choice() -> dict[str, object]:
+def choice(components: int = 4) -> dict[str, object]:
     """Time the search for wavelengths and compare it with greedy selection."""
     from tinctor import WavelengthsAsked
     from tinctor.plan.search import best_set
     from tinctor.plan.selection import CRITERIA, criterion_value
     from tinctor.plan.wavelengths import _problem
 
-    sample = _planned(4, 301)
-    result: dict[str, object] = {"bench": "choice", "components": 4, "wavelengths": 301, "count": 8}
+    sample, count = _planned(components, 301), max(8, components + 2)
+    repeats = 3 if components <= 4 else 1
+    result: dict[str, object] = {"bench": "choice", "components": components, "wavelengths": 301, "count": count}
     for criterion in CRITERIA:
         problem = _problem(sample, WavelengthsAsked(criterion=criterion))
-        found = best_set(problem, 8)
-        ours, greedy = best(lambda problem=problem: best_set(problem, 8), 3), best(lambda problem=problem: _greedy(problem, 8), 3)
-        value = criterion_value(problem, float(_greedy(problem, 8))) / criterion_value(problem, found.objective)
+        found = best_set(problem, count)
+        ours, greedy = (
+            best(lambda problem=problem: best_set(problem, count), repeats),
+            best(lambda problem=problem: _greedy(problem, count), repeats),
+        )
+        value = criterion_value(problem, float(_greedy(problem, count))) / criterion_value(problem, found.objective)
         key = criterion.replace("-", "_")
         result |= {f"{key}_s": round(ours, 2), f"{key}_over_greedy": round(ours / greedy, 1)}
         result |= {f"{key}_greedy_value_over_ours": round(value, 3), f"{key}_proved": found.exact}
@@ -239,16 +249,20 @@ def main() -> int:
     """Run each bench in a process of its own and print its line."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("--spectra", type=int, default=100_000, help="spectra of the batch (default 100000)")
+    parser.add_argument("--components", type=int, default=4, help="components of the bench choice (default 4)")
     parser.add_argument("--only", choices=NAMES, help="one bench")
     options = parser.parse_args()
     if os.environ.get(INSIDE):
         benches = {"batch": lambda: batch(options.spectra), "cold": cold, "memory": lambda: memory(options.spectra)}
-        result = {**benches, "standards": standards, "overlap": overlap, "choice": choice}[options.only]()
+        result = {**benches, "standards": standards, "overlap": overlap, "choice": lambda: choice(options.components)}[
+            options.only
+        ]()
         print(json.dumps(result), flush=True)
         return 0
     python = python_with_tinctor(extra="dev")
     for name in [options.only] if options.only else NAMES:
         command = [str(python), str(Path(__file__).resolve()), "--only", name, "--spectra", str(options.spectra)]
+        command += ["--components", str(options.components)]
         subprocess.run(command, cwd=ROOT, env={**os.environ, INSIDE: "1"}, check=True)
     return 0
 

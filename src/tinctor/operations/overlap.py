@@ -7,9 +7,18 @@ from typing import Annotated, Literal
 from pydantic import Field
 
 from tinctor.operations.overlap_words import NO_SUM, group_words, summary
-from tinctor.operations.plan_in import Plan, PlannedOut, PlanRequest, SpectraOut, finite, planned_flags, planned_out, spectra_out
+from tinctor.operations.plan_in import (
+    CellPlanRequest,
+    Plan,
+    PlannedOut,
+    SpectraOut,
+    finite,
+    planned_flags,
+    planned_out,
+    spectra_out,
+)
 from tinctor.operations.provenance import Provenance, provenance
-from tinctor.operations.shared import BudgetPart, FlagOut, Number, ResponseModel
+from tinctor.operations.shared import BudgetPart, FlagOut, ResponseModel
 from tinctor.plan.crossings import clear_windows, crossings
 from tinctor.plan.overlap import Overlap, overlap
 from tinctor.resolve.uncertainty import SOURCES
@@ -20,14 +29,10 @@ Schema = Literal["overlap/1"]
 VerdictWord = Literal["separable", "marginal", "inseparable"]
 
 
-class OverlapRequest(PlanRequest):
+class OverlapRequest(CellPlanRequest):
     """Can these components be told apart, and how well at best?"""
 
     schema_: Annotated[Schema, Field(alias="schema")] = "overlap/1"
-    path_length_cm: Number = 1.0
-    path_length_u_cm: Number = 0.0
-    dilution_factor: Number = 1.0
-    dilution_factor_u: Number = 0.0
 
 
 class ComponentOverlap(ResponseModel):
@@ -145,13 +150,7 @@ def run(request: OverlapRequest) -> OverlapResponse:
     >>> [(c.name, c.verdict, round(c.selectivity, 3)) for c in run(request).components]
     [('Cu', 'separable', 0.977), ('Ni', 'separable', 0.977)]
     """
-    plan = Plan.of(
-        request,
-        path_length_cm=request.path_length_cm,
-        path_length_u_cm=request.path_length_u_cm,
-        dilution_factor=request.dilution_factor,
-        dilution_factor_u=request.dilution_factor_u,
-    )
+    plan = Plan.of(request, cell=request.cell())
     answer = overlap(plan.sample)
     names = plan.sample.names
     met = [v.target_met for v in answer.verdicts if v.target_met is not None]

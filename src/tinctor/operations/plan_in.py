@@ -27,6 +27,7 @@ from tinctor.resolve.resolution import Severity
 from tinctor.resolve.settings import ResolveSettings
 
 __all__ = [
+    "CellPlanRequest",
     "Plan",
     "PlanRequest",
     "PlannedConcentration",
@@ -61,6 +62,19 @@ class PlanRequest(RequestModel):
     noise: NoiseIn = NoiseIn()
     target_relative_u: Number | None = Field(None, description="relative standard uncertainty wanted of each component")
     include_spectra: bool = Field(default=False, description="put the planned spectra into the response, for a chart")
+
+
+class CellPlanRequest(PlanRequest):
+    """A planned sample in a cell and at a dilution that are settled."""
+
+    path_length_cm: Number = Field(1.0, description="path length of the cell in cm")
+    path_length_u_cm: Number = Field(0.0, description="its standard uncertainty; 0 takes it as exact")
+    dilution_factor: Number = Field(1.0, description="final volume over taken volume")
+    dilution_factor_u: Number = Field(0.0, description="its standard uncertainty; 0 takes it as exact")
+
+    def cell(self) -> dict[str, float]:
+        """Return path and dilution by name."""
+        return {name: getattr(self, name) for name in CellPlanRequest.model_fields if name not in PlanRequest.model_fields}
 
 
 class PlannedConcentration(ResponseModel):
@@ -105,8 +119,11 @@ class Plan:
     settings: dict[str, Any]
 
     @classmethod
-    def of(cls, request: PlanRequest, concentrations: dict[str, float] | None = None, **cell: float) -> Plan:
-        """Return the plan of a request; `concentrations` in base units replace those of the request.
+    def of(
+        cls, request: PlanRequest, concentrations: dict[str, float] | None = None, *, cell: dict[str, float] | None = None
+    ) -> Plan:
+        """Return the plan of a request; `concentrations` in base units replace those of the request; `cell` is path and
+        dilution by name.
 
         Raises
         ------
@@ -135,7 +152,7 @@ class Plan:
                         settings,
                         step_nm=request.step_nm,
                         noise_correlation_nm=request.noise_correlation_nm,
-                        **cell,
+                        **(cell or {}),
                     ),
                 )
             ],

@@ -7,7 +7,16 @@ from typing import Annotated, Literal
 from pydantic import Field
 
 from tinctor.operations.overlap import WindowOut, windows_out
-from tinctor.operations.plan_in import Plan, PlannedOut, PlanRequest, SpectraOut, finite, planned_flags, planned_out, spectra_out
+from tinctor.operations.plan_in import (
+    CellPlanRequest,
+    Plan,
+    PlannedOut,
+    SpectraOut,
+    finite,
+    planned_flags,
+    planned_out,
+    spectra_out,
+)
 from tinctor.operations.provenance import Provenance, provenance
 from tinctor.operations.shared import FlagOut, Number, Numbers, ResponseModel, gather
 from tinctor.plan.wavelengths import Choice, WavelengthsAsked, choose_wavelengths
@@ -17,14 +26,10 @@ __all__ = ["ExpectedU", "WavelengthsRequest", "WavelengthsResponse", "run"]
 Schema = Literal["wavelengths/1"]
 
 
-class WavelengthsRequest(PlanRequest):
+class WavelengthsRequest(CellPlanRequest):
     """Which wavelengths, when only a few can be read?"""
 
     schema_: Annotated[Schema, Field(alias="schema")] = "wavelengths/1"
-    path_length_cm: Number = 1.0
-    path_length_u_cm: Number = 0.0
-    dilution_factor: Number = 1.0
-    dilution_factor_u: Number = 0.0
     count: Annotated[int, Field(ge=1, le=60)] | None = Field(None, description="as many as there are unknowns when left out")
     candidates_nm: Numbers | None = Field(None, description="where one can measure; all planned readings when left out")
     minimum_spacing_nm: Number = Field(0.0, description="smallest distance between two of them")
@@ -103,13 +108,7 @@ def run(request: WavelengthsRequest) -> WavelengthsResponse:
     >>> response.wavelengths_nm, response.exact
     ([395.0, 810.0], True)
     """
-    plan = Plan.of(
-        request,
-        path_length_cm=request.path_length_cm,
-        path_length_u_cm=request.path_length_u_cm,
-        dilution_factor=request.dilution_factor,
-        dilution_factor_u=request.dilution_factor_u,
-    )
+    plan = Plan.of(request, cell=request.cell())
     window = request.absorbance_window
     (found,) = gather(
         [
